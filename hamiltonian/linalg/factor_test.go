@@ -1,0 +1,275 @@
+package linalg
+
+import (
+	"math"
+	"math/cmplx"
+	"math/rand/v2"
+	"testing"
+)
+
+func gaussian(rng *rand.Rand, n int) []float64 {
+	x := make([]float64, n)
+	for i := range x {
+		x[i] = rng.NormFloat64()
+	}
+	return x
+}
+
+// leibniz is the determinant as the sum over permutations, by expansion along
+// the first row.
+func leibniz(n int, at func(i, j int) complex128) complex128 {
+	var expand func(row int, used uint) complex128
+	expand = func(row int, used uint) complex128 {
+		if row == n {
+			return 1
+		}
+		var sum complex128
+		sign := complex128(1)
+		for j := range n {
+			if used&(1<<j) != 0 {
+				continue
+			}
+			sum += sign * at(row, j) * expand(row+1, used|1<<j)
+			sign = -sign
+		}
+		return sum
+	}
+	return expand(0, 0)
+}
+
+// matchings is the Pfaffian as the sum over perfect matchings.
+func matchings(indices []int, at func(i, j int) complex128) complex128 {
+	if len(indices) == 0 {
+		return 1
+	}
+	var sum complex128
+	sign := complex128(1)
+	for k := 1; k < len(indices); k++ {
+		rest := append(append([]int(nil), indices[1:k]...), indices[k+1:]...)
+		sum += sign * at(indices[0], indices[k]) * matchings(rest, at)
+		sign = -sign
+	}
+	return sum
+}
+
+func TestInvertBatch(t *testing.T) {
+	rng := rand.New(rand.NewPCG(1, 1))
+	for _, count := range []int{1, 3, 8, 19} {
+		for n := range 34 {
+			a := gaussian(rng, count*2*n*n)
+			inverse := append([]float64(nil), a...)
+			scratch := append([]float64(nil), a...)
+			logAbs, phase := make([]float64, count), make([]complex128, count)
+			InvertBatch(n, count, inverse, logAbs, phase)
+			logOnly, phaseOnly := make([]float64, count), make([]complex128, count)
+			LogDetBatch(n, count, scratch, logOnly, phaseOnly)
+			for w := range count {
+				are, aim := planes(n, w, a)
+				bre, bim := planes(n, w, inverse)
+				var norm float64
+				for i := range bre {
+					norm = max(norm, math.Abs(bre[i]), math.Abs(bim[i]))
+				}
+				for i := range n {
+					for j := range n {
+						var sum complex128
+						for k := range n {
+							sum += complex(are[i*n+k], aim[i*n+k]) * complex(bre[k*n+j], bim[k*n+j])
+						}
+						if i == j {
+							sum--
+						}
+						if cmplx.Abs(sum) > 1e-13*float64(n)*max(norm, 1) {
+							t.Fatalf("n=%d w=%d: A·A⁻¹ − 1 is %v at (%d,%d)", n, w, sum, i, j)
+						}
+					}
+				}
+				if math.Abs(logAbs[w]-logOnly[w]) > 1e-11 || cmplx.Abs(phase[w]-phaseOnly[w]) > 1e-11 {
+					t.Fatalf("n=%d: determinant with the inverse %v %v, alone %v %v", n, logAbs[w], phase[w], logOnly[w], phaseOnly[w])
+				}
+				if n <= 6 {
+					want := leibniz(n, func(i, j int) complex128 { return complex(are[i*n+j], aim[i*n+j]) })
+					got := phase[w] * complex(math.Exp(logAbs[w]), 0)
+					if cmplx.Abs(got-want) > 1e-12*(1+cmplx.Abs(want)) {
+						t.Fatalf("n=%d: determinant %v, expected %v", n, got, want)
+					}
+				}
+			}
+		}
+	}
+}
+
+func TestInvertBatchSingular(t *testing.T) {
+	// Row 3 is half of row 1 and all pivots are powers of two: every step is exact.
+	a := []float64{4, 2, 8, 0, 2, 6, 2, 1, 4, 0, 4, 0, 0, 0, 1, 0, 2, 0}
+	b := append([]float64(nil), a...)
+	logAbs, phase := []float64{7}, []complex128{7}
+	InvertBatch(3, 1, a, logAbs, phase)
+	if !math.IsInf(logAbs[0], -1) || phase[0] != 0 {
+		t.Errorf("inverse of a singular matrix: log|det| %v, phase %v", logAbs, phase)
+	}
+	for _, v := range a {
+		if v != 0 {
+			t.Fatal("inverse of a singular matrix is not zero")
+		}
+	}
+	LogDetBatch(3, 1, b, logAbs, phase)
+	if !math.IsInf(logAbs[0], -1) || phase[0] != 0 {
+		t.Errorf("singular matrix: log|det| %v, phase %v", logAbs, phase)
+	}
+}
+
+func TestInvertBatchNaN(t *testing.T) {
+	rng := rand.New(rand.NewPCG(2, 1))
+	const n, count = 4, 9
+	for _, bad := range []float64{math.NaN(), math.Inf(1)} {
+		clean := gaussian(rng, count*2*n*n)
+		dirty := append([]float64(nil), clean...)
+		dirty[5*2*n*n+7] = bad
+		cl, cp := make([]float64, count), make([]complex128, count)
+		dl, dp := make([]float64, count), make([]complex128, count)
+		InvertBatch(n, count, clean, cl, cp)
+		InvertBatch(n, count, dirty, dl, dp)
+		for w := range count {
+			if w == 5 {
+				if !math.IsNaN(dl[w]) || !cmplx.IsNaN(dp[w]) {
+					t.Errorf("matrix with %v: log|det| %v, phase %v", bad, dl[w], dp[w])
+				}
+			} else if dl[w] != cl[w] || dp[w] != cp[w] {
+				t.Errorf("matrix %d changed with a %v in another one", w, bad)
+			}
+		}
+	}
+}
+
+func TestOrthonormalize(t *testing.T) {
+	rng := rand.New(rand.NewPCG(3, 1))
+	for _, shape := range [][3]int{{1, 1, 2}, {5, 1, 4}, {5, 5, 10}, {9, 4, 21}, {40, 12, 24}, {100, 20, 80}} {
+		rows, cols, stride := shape[0], shape[1], shape[2]
+		for _, condition := range []float64{1, 1e3, 1e10} {
+			a := gaussian(rng, rows*stride)
+			for p := range rows { // the last column almost a copy of the first
+				if cols > 1 {
+					a[p*stride+cols-1] = a[p*stride] + a[p*stride+cols-1]/condition
+					a[p*stride+2*cols-1] = a[p*stride+cols] + a[p*stride+2*cols-1]/condition
+				}
+			}
+			q := append([]float64(nil), a...)
+			logDet, err := Orthonormalize(rows, cols, q, stride)
+			if err != nil {
+				t.Fatal(err)
+			}
+			r := product(rows, cols, q, a, stride) // Q†A = R
+			one := product(rows, cols, q, q, stride)
+			var sum float64
+			for i := range cols {
+				sum += math.Log(real(r[i*cols+i]))
+				for j := range cols {
+					want := complex128(0)
+					if i == j {
+						want = 1
+					}
+					if cmplx.Abs(one[i*cols+j]-want) > 1e-14*float64(rows) {
+						t.Errorf("%v condition %g: Q†Q is %v at (%d,%d)", shape, condition, one[i*cols+j], i, j)
+					}
+					if j < i && cmplx.Abs(r[i*cols+j]) > 1e-13*float64(rows) {
+						t.Errorf("%v condition %g: R is not triangular: %v at (%d,%d)", shape, condition, r[i*cols+j], i, j)
+					}
+				}
+				if math.Abs(imag(r[i*cols+i])) > 1e-13*float64(rows) {
+					t.Errorf("%v: diagonal of R is not real: %v", shape, r[i*cols+i])
+				}
+			}
+			if math.Abs(sum-logDet) > 1e-14*float64(rows)*condition {
+				t.Errorf("%v condition %g: log det R %v, expected %v", shape, condition, logDet, sum)
+			}
+			for p := range rows {
+				for j := range cols { // A = QR
+					var back complex128
+					for k := range j + 1 {
+						back += complex(q[p*stride+k], q[p*stride+cols+k]) * r[k*cols+j]
+					}
+					if cmplx.Abs(back-complex(a[p*stride+j], a[p*stride+cols+j])) > 1e-14*float64(rows) {
+						t.Fatalf("%v condition %g: QR differs from A at (%d,%d)", shape, condition, p, j)
+					}
+				}
+				for i := 2 * cols; i < stride; i++ {
+					if a[p*stride+i] != q[p*stride+i] {
+						t.Fatalf("%v: wrote past the columns", shape)
+					}
+				}
+			}
+		}
+	}
+}
+
+func product(rows, cols int, a, b []float64, stride int) []complex128 {
+	out := make([]complex128, cols*cols)
+	for i := range cols {
+		for j := range cols {
+			for p := range rows {
+				x := complex(a[p*stride+i], -a[p*stride+cols+i])
+				out[i*cols+j] += x * complex(b[p*stride+j], b[p*stride+cols+j])
+			}
+		}
+	}
+	return out
+}
+
+func TestOrthonormalizeRefuses(t *testing.T) {
+	if _, err := Orthonormalize(3, 2, []float64{1, 1, 0, 0, 2, 2, 0, 0, 3, 3, 0, 0}, 4); err == nil {
+		t.Error("two equal columns passed")
+	}
+	if _, err := Orthonormalize(2, 2, make([]float64, 8), 4); err == nil {
+		t.Error("a zero matrix passed")
+	}
+	if _, err := Orthonormalize(1, 2, []float64{1, 0, 0, 1}, 4); err == nil {
+		t.Error("two columns of length one passed")
+	}
+	if _, err := Orthonormalize(2, 1, []float64{1, math.NaN(), 0, 1}, 2); err == nil {
+		t.Error("a NaN passed")
+	}
+	if _, err := Orthonormalize(2, 1, []float64{1, math.Inf(1), 0, 1}, 2); err == nil {
+		t.Error("an infinity passed")
+	}
+}
+
+func TestPfaffian(t *testing.T) {
+	rng := rand.New(rand.NewPCG(4, 1))
+	for n := range 25 {
+		re, im := gaussian(rng, n*n), gaussian(rng, n*n)
+		for i := range n {
+			re[i*n+i], im[i*n+i] = 0, 0
+			for j := range i {
+				re[i*n+j], im[i*n+j] = -re[j*n+i], -im[j*n+i]
+			}
+		}
+		a := append(append([]float64(nil), re...), im...)
+		logAbs, phase := Pfaffian(n, append([]float64(nil), re...), append([]float64(nil), im...))
+		if n%2 == 1 {
+			if !math.IsInf(logAbs, -1) || phase != 0 {
+				t.Errorf("n=%d: %v %v, expected zero", n, logAbs, phase)
+			}
+			continue
+		}
+		if n <= 10 {
+			indices := make([]int, n)
+			for i := range indices {
+				indices[i] = i
+			}
+			want := matchings(indices, func(i, j int) complex128 { return complex(re[i*n+j], im[i*n+j]) })
+			got := phase * complex(math.Exp(logAbs), 0)
+			if cmplx.Abs(got-want) > 1e-12*cmplx.Abs(want) {
+				t.Errorf("n=%d: %v, expected %v", n, got, want)
+			}
+		}
+		l, p := make([]float64, 1), make([]complex128, 1)
+		LogDetBatch(n, 1, a, l, p) // pf² = det
+		if math.Abs(2*logAbs-l[0]) > 1e-11 || cmplx.Abs(phase*phase-p[0]) > 1e-11 {
+			t.Errorf("n=%d: squared Pfaffian %v %v, determinant %v %v", n, 2*logAbs, phase*phase, l[0], p[0])
+		}
+	}
+	if logAbs, phase := Pfaffian(4, make([]float64, 16), make([]float64, 16)); !math.IsInf(logAbs, -1) || phase != 0 {
+		t.Errorf("zero matrix: %v %v", logAbs, phase)
+	}
+}
