@@ -106,7 +106,11 @@ func (h *Hamiltonian) FreezeCore(n int) (*Hamiltonian, error) {
 			}
 		}
 	}
+	for g, s := range f.Sign {
+		out.Constant += 0.5 * s * trace[g] * trace[g]
+	}
 	l := mat.NewDense(h.Orbitals, h.Orbitals, nil)
+	var square, exchange mat.Dense
 	for spin := range 2 {
 		one := mat.NewSymDense(m, nil)
 		for p := range m {
@@ -117,11 +121,7 @@ func (h *Hamiltonian) FreezeCore(n int) (*Hamiltonian, error) {
 		packed := make([]float64, f.Count()*Pairs(m))
 		for g, s := range f.Sign {
 			f.Unpack(l, g, spin)
-			if spin == Up {
-				out.Constant += 0.5 * s * trace[g] * trace[g]
-			}
 			core := l.Slice(0, n, 0, n)
-			var square, exchange mat.Dense
 			square.Mul(core, core)
 			out.Constant -= 0.5 * s * mat.Trace(&square)
 			exchange.Mul(l.Slice(n, h.Orbitals, 0, n), l.Slice(0, n, n, h.Orbitals))
@@ -134,18 +134,9 @@ func (h *Hamiltonian) FreezeCore(n int) (*Hamiltonian, error) {
 			}
 		}
 		out.OneBody[spin], out.Factors.Packed[spin] = one, packed
-		if spin == Up && h.SpinFree() {
-			out.OneBody[Down], out.Factors.Packed[Down] = one, packed
-			// The down core's share of the exchange constant equals the up core's.
-			for g, s := range f.Sign {
-				f.Unpack(l, g, Down)
-				core := l.Slice(0, n, 0, n)
-				var square mat.Dense
-				square.Mul(core, core)
-				out.Constant -= 0.5 * s * mat.Trace(&square)
-			}
-			break
-		}
+	}
+	if h.SpinFree() {
+		out.OneBody[Down], out.Factors.Packed[Down] = out.OneBody[Up], out.Factors.Packed[Up]
 	}
 	return out, nil
 }
