@@ -3,6 +3,7 @@ package factorize
 import (
 	"cmp"
 	"context"
+	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -21,7 +22,11 @@ const (
 	// rounding is the negative diagonal, relative to the largest one, that is put
 	// down to rounded input (integrals printed with eight digits).
 	rounding = 1e-7
+	// overflow is the magnitude above which products of numbers leave float64.
+	overflow = 1e100
 )
+
+var errOverflow = errors.New("two-electron integrals are not finite or beyond 1e100")
 
 // IndefiniteError says that a matrix has no Cholesky factorisation.
 type IndefiniteError struct {
@@ -82,6 +87,9 @@ func Cholesky(ctx context.Context, v Matrix, tolerance float64) (f *hamiltonian.
 		}
 		count := len(factors) / n
 		largest, lowest := slices.Max(diagonal), slices.Min(diagonal)
+		if !(largest-lowest <= overflow) {
+			return nil, 0, errOverflow
+		}
 		if largest <= tolerance || largest <= -lowest || count >= n {
 			residual = max(largest, -lowest, 0)
 			if -lowest > max(tolerance, rounding*scale) {

@@ -221,6 +221,19 @@ func TestTooLarge(t *testing.T) {
 	}
 }
 
+// TestOverflow must end, and with an error.
+func TestOverflow(t *testing.T) {
+	for _, x := range []float64{math.NaN(), math.Inf(1), math.Inf(-1), 1e200} {
+		for place := range 9 {
+			v := dense{3, []float64{1, 0, 0, 0, 1, 0, 0, 0, 1}}
+			v.data[place], v.data[place%3*3+place/3] = x, x
+			if _, _, err := Signed(t.Context(), v, 1e-6); !errors.Is(err, errOverflow) {
+				t.Errorf("%g at %d: %v, expected the refusal of such numbers", x, place, err)
+			}
+		}
+	}
+}
+
 func TestCancelled(t *testing.T) {
 	ctx, cancel := context.WithCancel(t.Context())
 	cancel()

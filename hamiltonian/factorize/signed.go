@@ -85,7 +85,14 @@ func Eigen(ctx context.Context, v Matrix, tolerance float64) (f *hamiltonian.Fac
 	var pairs []int
 	for i := range n {
 		v.Column(i, column)
-		if slices.ContainsFunc(column, func(x float64) bool { return x != 0 }) {
+		largest := 0.0
+		for _, x := range column {
+			largest = math.Max(largest, math.Abs(x)) // keeps NaN
+		}
+		if !(largest <= overflow) {
+			return nil, 0, errOverflow
+		}
+		if largest > 0 {
 			pairs = append(pairs, i)
 		}
 		if err := ctx.Err(); err != nil {
