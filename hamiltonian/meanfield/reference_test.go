@@ -1,79 +1,36 @@
 package meanfield
 
 import (
-	"context"
 	"math"
 	"os"
 	"path/filepath"
-	"regexp"
-	"strconv"
-	"strings"
 	"testing"
 
-	"gonum.org/v1/gonum/mat"
-
 	"leadline/hamiltonian"
+	"leadline/hamiltonian/fcidump"
 )
 
-// readIntegrals reads a small integral interchange file of testdata and
-// factorises it exactly, by the eigenvectors of the matrix (pq|rs).
 func readIntegrals(t testing.TB, name string) *hamiltonian.Hamiltonian {
 	t.Helper()
-	text, err := os.ReadFile(filepath.Join("testdata", name))
+	file, err := os.Open(filepath.Join("testdata", name))
 	if err != nil {
 		t.Fatal(err)
 	}
-	field := func(key string) int {
-		match := regexp.MustCompile(key + `\s*=\s*(-?\d+)`).FindSubmatch(text)
-		if match == nil {
-			t.Fatalf("%s: no %s", name, key)
-		}
-		v, _ := strconv.Atoi(string(match[1]))
-		return v
+	defer file.Close()
+	integrals, err := fcidump.Read(t.Context(), file, name, nil)
+	if err != nil {
+		t.Fatal(err)
 	}
-	m, electrons, ms2 := field("NORB"), field("NELEC"), field("MS2")
-	h := &hamiltonian.Hamiltonian{Sector: hamiltonian.Sector{Orbitals: m, Up: (electrons + ms2) / 2, Down: (electrons - ms2) / 2}}
-	one := mat.NewSymDense(m, nil)
-	pairs := hamiltonian.Pairs(m)
-	two := mat.NewSymDense(pairs, nil)
-	_, body, _ := strings.Cut(string(text), "&END")
-	for line := range strings.Lines(body) {
-		f := strings.Fields(line)
-		if len(f) != 5 {
-			continue
-		}
-		v, _ := strconv.ParseFloat(f[0], 64)
-		var i [4]int
-		for k := range i {
-			i[k], _ = strconv.Atoi(f[k+1])
-			i[k]--
-		}
-		switch {
-		case i[0] < 0:
-			h.Constant = v
-		case i[2] < 0 && i[1] >= 0:
-			one.SetSym(i[0], i[1], v)
-		case i[2] >= 0:
-			two.SetSym(hamiltonian.Pair(i[0], i[1]), hamiltonian.Pair(i[2], i[3]), v)
-		}
-	}
-	h.OneBody = [2]*mat.SymDense{one, one}
-	values, vectors, _ := eigenvectors(two)
-	h.Factors = hamiltonian.NewFactors(m, pairs)
-	for g, v := range values {
-		h.Factors.Sign[g] = math.Copysign(1, v)
-		for i := range pairs {
-			h.Factors.Row(g, 0)[i] = math.Sqrt(math.Abs(v)) * vectors.At(i, g)
-		}
+	h, _, err := integrals.Hamiltonian(t.Context(), 1e-12)
+	if err != nil {
+		t.Fatal(err)
 	}
 	return h
 }
 
 // Lowest RHF or ROHF and UHF energies, and ⟨S²⟩ of the latter, of the files in
 // testdata, by an independent program from the same integrals, lowest of 20 to
-// 30 starts. The UHF energy of H10 is also that of the public data set of Motta
-// et al., Phys. Rev. X 7, 031059 (2017); that of LiH STO-6G and those with
-// -17.75 and 4 follow from closed forms.
+// 30 starts.
 var references = []struct {
 	file         string
 	rhf, uhf, s2 float64
@@ -114,7 +71,7 @@ func TestReferenceEnergies(t *testing.T) {
 				restricted = ROHF
 			}
 			check := func(kind Kind, energy, tolerance, spin float64) {
-				s, err := Solve(context.Background(), h, kind, Options{})
+				s, err := Solve(t.Context(), h, kind, Options{})
 				if err != nil {
 					t.Fatal(err)
 				}
@@ -132,5 +89,30 @@ func TestReferenceEnergies(t *testing.T) {
 			check(restricted, r.rhf, 1e-8, exact*(exact+1))
 			check(UHF, r.uhf, 1e-7, r.s2)
 		})
+	}
+}
+
+func TestPublishedEnergies(t *testing.T) {
+	for _, c := range []struct {
+		file      string
+		kind      Kind
+		energy    float64
+		tolerance float64
+		source    string
+	}{
+		{"H10_chain_R1.8_sto6g", UHF, -5.27744870209, 1e-9, "Motta et al., Phys. Rev. X 7, 031059 (2017), open data set, ten atoms, R = 1.8, minimal basis"},
+		{"H2_sto3g_R1.4", RHF, -1.1167, 5e-5, "Szabo & Ostlund, Modern Quantum Chemistry, ch. 3"},
+		// Filled shells of plane waves: Σ n ε + U N_up N_down/M.
+		{"Hubbard_sq4x4_U4_5u5d", RHF, -24 + 4*25./16, 1e-10, "closed form"},
+		{"Hubbard_sq2x4_U8_4u4d", RHF, -12 + 8*16./8, 1e-10, "closed form"},
+		{"Hubbard_ring10_U4_5u5d", RHF, -4*(1+2*math.Cos(math.Pi/5)+2*math.Cos(2*math.Pi/5)) + 4*25./10, 1e-10, "closed form"},
+	} {
+		s, err := Solve(t.Context(), readIntegrals(t, c.file+".fcidump"), c.kind, Options{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		if math.Abs(s.Energy-c.energy) > c.tolerance {
+			t.Errorf("%s %s: %.12f, expected %.12f (%s)", c.file, c.kind, s.Energy, c.energy, c.source)
+		}
 	}
 }

@@ -30,6 +30,10 @@ func (p *problem) lowestMode(ctx context.Context, pt *point) (float64, []float64
 	if p.size <= denseHessian {
 		return p.lowestDense(ctx, pt)
 	}
+	return p.lowestDavidson(ctx, pt)
+}
+
+func (p *problem) lowestDavidson(ctx context.Context, pt *point) (float64, []float64, error) {
 	diagonal := make([]float64, p.size)
 	p.diagonal(pt, diagonal)
 	order := make([]int, p.size)
