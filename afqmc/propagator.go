@@ -1,0 +1,347 @@
+package afqmc
+
+import (
+	"fmt"
+	"math"
+	"math/rand/v2"
+
+	"gonum.org/v1/gonum/mat"
+
+	"leadline/hamiltonian"
+	"leadline/hamiltonian/linalg"
+)
+
+// Propagator holds the constant operands of one step.
+type Propagator struct {
+	TimeStep float64
+	// Shift holds l_g, one per factor.
+	Shift []float64
+	// Constant is e0.
+	Constant float64
+	// Order is the number of terms of the Taylor series of exp(X).
+	Order int
+
+	orbitals      int
+	spins         int               // 1 where both spins are moved by the same X
+	imaginary     []bool            // η_g = i (s_g = +1) or 1 (s_g = −1)
+	half          [2]*linalg.Packed // exp(−τT/2), M×M
+	symmetric     [2]*linalg.Packed // packed factors, ng_s × M(M+1)/2
+	antisymmetric [2]*linalg.Packed // packed factors, ng_a × M(M+1)/2
+}
+
+const (
+	taylorError    = 1e-7 // bound on the series' remainder, relative
+	taylorSamples  = 8
+	largestOrder   = 16
+	normIterations = 20
+)
+
+// NewPropagator prepares the operands for a time step and mean-field shift l_g.
+//
+// The order of the series is the smallest with ‖X‖^(k+1)/(k+1)! < 1e-7, where
+// ‖X‖ is the largest 2-norm met in eight draws of the fields.
+func NewPropagator(h *hamiltonian.Hamiltonian, timeStep float64, shift []float64) (*Propagator, error) {
+	p := &Propagator{
+		TimeStep: timeStep,
+		Shift:    shift,
+		Constant: h.Constant,
+		orbitals: h.Orbitals,
+		spins:    2,
+	}
+	if h.SpinFree() {
+		p.spins = 1
+	}
+	f := h.Factors
+	p.imaginary = make([]bool, f.Count())
+	for g, s := range f.Sign {
+		p.imaginary[g] = s > 0
+		p.Constant -= 0.5 * s * shift[g] * shift[g]
+	}
+	width, ns := hamiltonian.Pairs(h.Orbitals), f.Symmetric()
+	for spin := range p.spins {
+		half, err := exponential(meanFieldOneBody(h, spin, shift), -0.5*timeStep)
+		if err != nil {
+			return nil, err
+		}
+		p.half[spin] = linalg.Pack(false, h.Orbitals, h.Orbitals, half.RawMatrix().Data, h.Orbitals)
+		packed := f.Packed[spin]
+		if ns > 0 {
+			p.symmetric[spin] = linalg.Pack(false, ns, width, packed[:ns*width], width)
+		}
+		if f.Antisymmetric > 0 {
+			p.antisymmetric[spin] = linalg.Pack(false, f.Antisymmetric, width, packed[ns*width:], width)
+		}
+	}
+	norm := p.typicalNorm()
+	p.Order = 2
+	for term := norm * norm * norm / 6; term > taylorError; term *= norm / float64(p.Order+1) {
+		p.Order++
+		if p.Order > largestOrder {
+			return nil, fmt.Errorf("time step %g is too large: the exponent of one step has norm %.3g, expected less than about 5", timeStep, norm)
+		}
+	}
+	return p, nil
+}
+
+// meanFieldOneBody returns T = t + Σ_g s_g l_g L_g of one spin. An antisymmetric
+// factor has l_g = 0 in a real trial and is left out.
+func meanFieldOneBody(h *hamiltonian.Hamiltonian, spin int, shift []float64) *mat.SymDense {
+	t := h.SquareOneBody(spin)
+	f := h.Factors
+	for g, s := range f.Sign[:f.Symmetric()] {
+		k, row := 0, f.Row(g, spin)
+		for p := range h.Orbitals {
+			for q := range p + 1 {
+				t.SetSym(p, q, t.At(p, q)+s*shift[g]*row[k])
+				k++
+			}
+		}
+	}
+	return t
+}
+
+// exponential returns exp(scale·a) through the eigenvalues of a.
+func exponential(a *mat.SymDense, scale float64) (*mat.Dense, error) {
+	var eigen mat.EigenSym
+	if !eigen.Factorize(a, true) {
+		return nil, fmt.Errorf("the one-body matrix could not be diagonalised")
+	}
+	var v, scaled, out mat.Dense
+	eigen.VectorsTo(&v)
+	values := eigen.Values(nil)
+	scaled.Apply(func(_, j int, x float64) float64 { return x * math.Exp(scale*values[j]) }, &v)
+	out.Mul(&scaled, v.T())
+	return &out, nil
+}
+
+// area is the scratch of one tile: a worker owns one and allocates nothing else.
+type area struct {
+	deviates     []float64 // y, one row per walker
+	coefficients []float64 // √τ z η: rows 2i, 2i+1 are real and imaginary parts
+	packed       []float64 // X packed, symmetric part
+	packedAnti   []float64 // X packed, antisymmetric part
+	x            []float64 // [Re Xᵀ | Im Xᵀ], M×2M
+	columns      []float64 // the tile's columns between the two half steps
+	term, next   []float64 // columns of one walker in the series
+	products     []float64
+}
+
+func (p *Propagator) newArea(walkers, columns int) *area {
+	m, ng := p.orbitals, len(p.Shift)
+	a := &area{
+		deviates:     make([]float64, ng),
+		coefficients: make([]float64, 2*walkers*ng),
+		packed:       make([]float64, 2*walkers*hamiltonian.Pairs(m)),
+		x:            make([]float64, 2*m*m),
+		columns:      make([]float64, walkers*columns*2*m),
+		term:         make([]float64, columns*2*m),
+		next:         make([]float64, columns*2*m),
+		products:     make([]float64, 2*columns*2*m),
+	}
+	if p.antisymmetric[0] != nil {
+		a.packedAnti = make([]float64, 2*walkers*hamiltonian.Pairs(m))
+	}
+	return a
+}
+
+// bytes returns the size of one area.
+func (p *Propagator) bytes(walkers, columns int) int64 {
+	m, ng, pairs := int64(p.orbitals), int64(len(p.Shift)), int64(hamiltonian.Pairs(p.orbitals))
+	w, c := int64(walkers), int64(columns)
+	packed := 2 * w * pairs
+	if p.antisymmetric[0] != nil {
+		packed *= 2
+	}
+	return 8 * (ng + 2*w*ng + packed + 2*m*m + 2*m*c*(w+4))
+}
+
+// draw turns the deviates y and field expectations of walker i of a tile into
+// its row of coefficients √τ z η. It returns Σ_g √τ z_g η_g l_g, the importance
+// exponent Σ_g (y_g x̄_g − x̄_g²/2), and whether any |x̄_g| was bounded.
+func (p *Propagator) draw(a *area, i int, re, im []float64) (c, importance complex128, bounded bool) {
+	root := math.Sqrt(p.TimeStep)
+	ng := len(p.Shift)
+	cRe, cIm := a.coefficients[2*i*ng:(2*i+1)*ng], a.coefficients[(2*i+1)*ng:(2*i+2)*ng]
+	var shiftRe, shiftIm, weightRe, weightIm float64
+	for g, y := range a.deviates {
+		var biasRe, biasIm float64
+		if p.imaginary[g] {
+			biasRe, biasIm = root*im[g], -root*(re[g]-p.Shift[g])
+		} else {
+			biasRe, biasIm = -root*(re[g]-p.Shift[g]), -root*im[g]
+		}
+		if square := biasRe*biasRe + biasIm*biasIm; square > 1 {
+			scale := 1 / math.Sqrt(square)
+			biasRe, biasIm = biasRe*scale, biasIm*scale
+			bounded = true
+		}
+		zRe, zIm := root*(y-biasRe), -root*biasIm
+		if p.imaginary[g] {
+			zRe, zIm = -zIm, zRe
+		}
+		cRe[g], cIm[g] = zRe, zIm
+		shiftRe += zRe * p.Shift[g]
+		shiftIm += zIm * p.Shift[g]
+		weightRe += y*biasRe - 0.5*(biasRe*biasRe-biasIm*biasIm)
+		weightIm += y*biasIm - biasRe*biasIm
+	}
+	return complex(shiftRe, shiftIm), complex(weightRe, weightIm), bounded
+}
+
+// advance moves the columns of a tile (Walkers.Data, see there) by one step with
+// the coefficients in the area. Flops for each walker, N columns in all:
+// 2·ng·M(M+1) for the fields, 8·M²N for both half steps, 8·M²N·Order for the series.
+func (p *Propagator) advance(a *area, data []float64, count, up, down int) {
+	m := p.orbitals
+	columns := up + down
+	if p.spins == 1 {
+		p.half[0].Mul(count*2*columns, 1, data, m, 0, a.columns, m)
+		p.fields(a, count, 0)
+		for i := range count {
+			p.unpack(a, i)
+			p.series(a, a.columns[i*2*columns*m:(i+1)*2*columns*m])
+		}
+		p.half[0].Mul(count*2*columns, 1, a.columns, m, 0, data, m)
+		return
+	}
+	for spin, n := range [2]int{up, down} {
+		if n == 0 {
+			continue
+		}
+		p.fields(a, count, spin)
+		for i := range count {
+			own := data[(i*columns+spin*up)*2*m:][:n*2*m]
+			p.half[spin].Mul(2*n, 1, own, m, 0, a.columns, m)
+			p.unpack(a, i)
+			p.series(a, a.columns[:n*2*m])
+			p.half[spin].Mul(2*n, 1, a.columns, m, 0, own, m)
+		}
+	}
+}
+
+// fields forms X of every walker of a tile, packed.
+func (p *Propagator) fields(a *area, count, spin int) {
+	ng, width := len(p.Shift), hamiltonian.Pairs(p.orbitals)
+	if operand := p.symmetric[spin]; operand != nil {
+		operand.Mul(2*count, 1, a.coefficients, ng, 0, a.packed, width)
+	} else {
+		clear(a.packed[:2*count*width])
+	}
+	if operand := p.antisymmetric[spin]; operand != nil {
+		anti, _ := operand.Dims()
+		operand.Mul(2*count, 1, a.coefficients[ng-anti:], ng, 0, a.packedAnti, width)
+	}
+}
+
+// unpack writes [Re Xᵀ | Im Xᵀ] of walker i.
+func (p *Propagator) unpack(a *area, i int) {
+	m := p.orbitals
+	width := hamiltonian.Pairs(m)
+	for plane := range 2 {
+		row := a.packed[(2*i+plane)*width:][:width]
+		at := 0
+		for r := range m {
+			dst := a.x[r*2*m+plane*m:][:r+1]
+			src := row[at : at+r+1]
+			copy(dst, src)
+			for c, v := range src[:r] {
+				a.x[c*2*m+plane*m+r] = v
+			}
+			at += r + 1
+		}
+		if p.antisymmetric[0] == nil {
+			continue
+		}
+		row = a.packedAnti[(2*i+plane)*width:][:width]
+		at = 0
+		for r := range m {
+			for c := range r {
+				v := row[at+c]
+				a.x[r*2*m+plane*m+c] -= v
+				a.x[c*2*m+plane*m+r] += v
+			}
+			at += r + 1
+		}
+	}
+}
+
+// series replaces columns by exp(X)·columns: x_k = X x_{k−1}/k, summed.
+func (p *Propagator) series(a *area, columns []float64) {
+	m := p.orbitals
+	rows := len(columns) / m // real and imaginary rows
+	source := columns
+	for k := 1; k <= p.Order; k++ {
+		linalg.Gemm(false, false, rows, 2*m, m, 1/float64(k), source, m, a.x, 2*m, 0, a.products, 2*m)
+		for j := 0; j < rows; j += 2 {
+			ofRe, ofIm := a.products[j*2*m:(j+1)*2*m], a.products[(j+1)*2*m:(j+2)*2*m]
+			termRe, termIm := a.next[j*m:(j+1)*m], a.next[(j+1)*m:(j+2)*m]
+			sumRe, sumIm := columns[j*m:(j+1)*m], columns[(j+1)*m:(j+2)*m]
+			for q := range m {
+				re, im := ofRe[q]-ofIm[m+q], ofRe[m+q]+ofIm[q]
+				termRe[q], termIm[q] = re, im
+				sumRe[q] += re
+				sumIm[q] += im
+			}
+		}
+		a.term, a.next = a.next, a.term
+		source = a.term[:rows*m]
+	}
+}
+
+// typicalNorm returns the largest 2-norm of X in a few draws of the fields.
+func (p *Propagator) typicalNorm() float64 {
+	m := p.orbitals
+	a := p.newArea(1, 1)
+	rng := rand.New(rand.NewPCG(1, 2))
+	largest := 0.0
+	for range taylorSamples {
+		for g := range a.deviates {
+			a.deviates[g] = rng.NormFloat64()
+		}
+		p.draw(a, 0, p.Shift, make([]float64, len(p.Shift)))
+		for spin := range p.spins {
+			p.fields(a, 1, spin)
+			p.unpack(a, 0)
+			largest = max(largest, norm(a.x, m))
+		}
+	}
+	return largest
+}
+
+// norm estimates the 2-norm of a complex matrix [Re | Im], M×2M, by power
+// iteration on X†X.
+func norm(x []float64, m int) float64 {
+	v := make([]complex128, m)
+	for i := range v {
+		v[i] = complex(1/math.Sqrt(float64(m)), 0.01*float64(i))
+	}
+	u := make([]complex128, m)
+	estimate := 0.0
+	for range normIterations {
+		length := 0.0
+		for i := range u {
+			u[i] = 0
+			for j := range v {
+				u[i] += complex(x[i*2*m+j], x[i*2*m+m+j]) * v[j]
+			}
+			length += real(u[i])*real(u[i]) + imag(u[i])*imag(u[i])
+		}
+		before := 0.0
+		for _, e := range v {
+			before += real(e)*real(e) + imag(e)*imag(e)
+		}
+		estimate = math.Sqrt(length / before)
+		if length == 0 {
+			return 0
+		}
+		scale := 1 / math.Sqrt(length)
+		for j := range v {
+			v[j] = 0
+			for i := range u {
+				v[j] += complex(x[i*2*m+j], -x[i*2*m+m+j]) * u[i]
+			}
+			v[j] *= complex(scale, 0)
+		}
+	}
+	return estimate
+}
