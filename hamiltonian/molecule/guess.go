@@ -1,0 +1,249 @@
+package molecule
+
+import (
+	"context"
+	"fmt"
+	"math"
+
+	"gonum.org/v1/gonum/mat"
+
+	"leadline/hamiltonian/basis"
+	"leadline/hamiltonian/molecule/integral"
+)
+
+// guess fills r.Density with the superposition of spherically averaged atomic
+// densities (Almlöf, Faegri and Korsell, J. Comput. Chem. 3, 385 (1982); Van
+// Lenthe et al., ibid. 27, 926 (2006)), scaled to the electrons of each spin.
+func (r *Result) guess(ctx context.Context, g Geometry, set *basis.Set, cartesian bool) error {
+	n, m := r.Orbitals.Dims()
+	total := mat.NewSymDense(n, nil)
+	atoms := map[int]*mat.SymDense{}
+	first := 0
+	for _, a := range g {
+		if atoms[a.Z] == nil {
+			d, err := atomicDensity(ctx, a.Z, set, cartesian)
+			if err != nil {
+				return fmt.Errorf("first density of %s: %w", basis.Symbol(a.Z), err)
+			}
+			atoms[a.Z] = d
+		}
+		d := atoms[a.Z]
+		for p := range d.SymmetricDim() {
+			for q := range p + 1 {
+				total.SetSym(first+p, first+q, d.At(p, q))
+			}
+		}
+		first += d.SymmetricDim()
+	}
+	// The density operator in the orbitals is XᵀS·D·SX.
+	var sx, half, full mat.Dense
+	sx.Mul(r.Overlap, r.Orbitals)
+	half.Mul(total, &sx)
+	full.Mul(sx.T(), &half)
+	for spin := range r.Density {
+		r.Density[spin] = mat.NewSymDense(m, nil)
+		scale := float64(r.Hamiltonian.Electrons(spin)) / mat.Trace(&full)
+		for p := range m {
+			for q := range p + 1 {
+				r.Density[spin].SetSym(p, q, 0.5*scale*(full.At(p, q)+full.At(q, p)))
+			}
+		}
+	}
+	return nil
+}
+
+// subshells in the order in which electrons fill them (Madelung's rule): n, l.
+var subshells = [][2]int{{1, 0}, {2, 0}, {2, 1}, {3, 0}, {3, 1}, {4, 0}, {3, 2}, {4, 1}, {5, 0}, {4, 2}, {5, 1},
+	{6, 0}, {4, 3}, {5, 2}, {6, 1}, {7, 0}, {5, 3}, {6, 2}, {7, 1}}
+
+// occupations returns, for every angular momentum, the electrons in each of its
+// orbitals from below, spread evenly over the 2l+1 components. Subshells that the
+// basis lacks are passed over; electrons may be left over in a basis too small.
+func occupations(z int, functions [basis.MaxL + 1]int) (o [basis.MaxL + 1][]float64) {
+	left := float64(z)
+	for _, s := range subshells {
+		n, l := s[0], s[1]
+		if left == 0 || len(o[l]) != n-l-1 || functions[l] < n-l {
+			continue
+		}
+		electrons := min(left, float64(2*(2*l+1)))
+		left -= electrons
+		o[l] = append(o[l], electrons/float64(2*l+1))
+	}
+	return o
+}
+
+// atom is the mean-field problem of one atom whose orbitals have the symmetry of
+// the sphere.
+type atom struct {
+	n           int
+	places      [basis.MaxL + 1][]int // first function of each shell, by angular momentum
+	core        *mat.SymDense
+	factors     *integral.Cholesky
+	orthonormal [basis.MaxL + 1]*mat.Dense
+	occupations [basis.MaxL + 1][]float64
+}
+
+// atomicDensity returns the density of a neutral atom with evenly occupied
+// subshells over the basis functions: a restricted mean field, iterated until it
+// is good enough for a start.
+func atomicDensity(ctx context.Context, z int, set *basis.Set, cartesian bool) (*mat.SymDense, error) {
+	g := Geometry{{Z: z}}
+	shells, nuclei, err := g.shells(set)
+	if err != nil {
+		return nil, err
+	}
+	f := integral.New(shells, false)
+	a := &atom{n: f.Count(), core: mat.NewSymDense(f.Count(), nil)}
+	a.core.AddSym(f.Kinetic(), f.Attraction(nuclei))
+	if a.factors, err = f.Factorise(ctx, 1e-4, nil); err != nil {
+		return nil, err
+	}
+	var functions [basis.MaxL + 1]int
+	first := 0
+	for _, s := range shells {
+		a.places[s.L] = append(a.places[s.L], first)
+		functions[s.L]++
+		first += 2*s.L + 1
+	}
+	a.occupations = occupations(z, functions)
+	overlap := f.Overlap()
+	for l := range a.places {
+		if len(a.places[l]) == 0 {
+			continue
+		}
+		if a.orthonormal[l], err = orthonormal(a.average(overlap, l), defaultDependence); err != nil {
+			return nil, err
+		}
+	}
+	d, err := a.solve()
+	if err != nil || !cartesian {
+		return d, err
+	}
+	return toCartesian(d, shells), nil
+}
+
+// average returns the block of angular momentum l, the mean over its components.
+func (a *atom) average(full *mat.SymDense, l int) *mat.SymDense {
+	out := mat.NewSymDense(len(a.places[l]), nil)
+	for i, p := range a.places[l] {
+		for j, q := range a.places[l][:i+1] {
+			sum := 0.0
+			for m := range 2*l + 1 {
+				sum += full.At(p+m, q+m)
+			}
+			out.SetSym(i, j, sum/float64(2*l+1))
+		}
+	}
+	return out
+}
+
+// solve iterates with half of the new density mixed in; the occupations are fixed
+// for every angular momentum, so that this converges.
+func (a *atom) solve() (*mat.SymDense, error) {
+	const iterations, enough = 40, 1e-4
+	density := mat.NewSymDense(a.n, nil)
+	fock := a.core
+	for i := range iterations {
+		next, err := a.fill(fock)
+		if err != nil {
+			return nil, err
+		}
+		change := 0.0
+		for p := range a.n {
+			for q := range p + 1 {
+				old, v := density.At(p, q), next.At(p, q)
+				change = max(change, math.Abs(v-old))
+				if i > 0 {
+					v = 0.5 * (v + old)
+				}
+				density.SetSym(p, q, v)
+			}
+		}
+		if change < enough {
+			break
+		}
+		fock = a.fock(density)
+	}
+	return density, nil
+}
+
+// fill returns the density of the lowest orbitals of a Fock matrix.
+func (a *atom) fill(fock *mat.SymDense) (*mat.SymDense, error) {
+	density := mat.NewSymDense(a.n, nil)
+	for l, occupation := range a.occupations {
+		if len(occupation) == 0 {
+			continue
+		}
+		x := a.orthonormal[l]
+		block := congruent(a.average(fock, l), x)
+		var eigen mat.EigenSym
+		if !eigen.Factorize(block, true) {
+			return nil, fmt.Errorf("diagonalisation of the Fock matrix did not converge")
+		}
+		var u, c mat.Dense
+		eigen.VectorsTo(&u)
+		c.Mul(x, &u)
+		for k, n := range occupation {
+			if _, orbitals := c.Dims(); k >= orbitals {
+				break
+			}
+			for i, p := range a.places[l] {
+				for j, q := range a.places[l][:i+1] {
+					for m := range 2*l + 1 {
+						density.SetSym(p+m, q+m, density.At(p+m, q+m)+n*c.At(i, k)*c.At(j, k))
+					}
+				}
+			}
+		}
+	}
+	return density, nil
+}
+
+// fock returns h + Σ_g [tr(L D)·L − ½·L D L].
+func (a *atom) fock(density *mat.SymDense) *mat.SymDense {
+	sum := mat.NewDense(a.n, a.n, nil)
+	sum.Copy(a.core)
+	full := mat.NewDense(a.n, a.n, nil)
+	var half, exchange mat.Dense
+	for b := range a.factors.Blocks() {
+		count, unpack := a.factors.Unpack(b)
+		for i := range count {
+			unpack(full.RawMatrix().Data, i)
+			half.Mul(full, density)
+			exchange.Mul(&half, full)
+			exchange.Scale(-0.5, &exchange)
+			sum.Add(sum, &exchange)
+			full.Scale(mat.Trace(&half), full)
+			sum.Add(sum, full)
+		}
+	}
+	out := mat.NewSymDense(a.n, nil)
+	for p := range a.n {
+		for q := range p + 1 {
+			out.SetSym(p, q, 0.5*(sum.At(p, q)+sum.At(q, p)))
+		}
+	}
+	return out
+}
+
+// toCartesian writes a density over spherical functions as one over cartesian
+// functions.
+func toCartesian(d *mat.SymDense, shells []integral.Shell) *mat.SymDense {
+	rows, columns := 0, 0
+	for _, s := range shells {
+		rows, columns = rows+(s.L+1)*(s.L+2)/2, columns+2*s.L+1
+	}
+	c := mat.NewDense(rows, columns, nil)
+	row, column := 0, 0
+	for _, s := range shells {
+		coefficients := integral.Spherical(s.L)
+		for m, spherical := range coefficients {
+			for k, v := range spherical {
+				c.Set(row+k, column+m, v)
+			}
+		}
+		row, column = row+(s.L+1)*(s.L+2)/2, column+2*s.L+1
+	}
+	return congruent(d, mat.DenseCopyOf(c.T()))
+}
