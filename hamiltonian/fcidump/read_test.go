@@ -13,6 +13,7 @@ import (
 	"testing"
 	"testing/iotest"
 
+	"leadline/hamiltonian"
 	"leadline/hamiltonian/internal/fock"
 )
 
@@ -135,6 +136,30 @@ func TestPermutations(t *testing.T) {
 		f := read(t, "&FCI NORB=4 NELEC=2 /\n0.5 "+order+"\n0 0 0 0 0\n")
 		if f.TwoElectron(3, 2, 1, 0) != 0.5 || f.TwoElectron(3, 1, 2, 0) != 0 {
 			t.Errorf("order %s: %v", order, f.TwoBody)
+		}
+	}
+}
+
+// TestMatrix compares the columns and the diagonal with single elements.
+func TestMatrix(t *testing.T) {
+	f := read(t, string(open(t, "lih.fcidump")))
+	n := f.Dim()
+	column, diagonal := make([]float64, n), make([]float64, n)
+	f.Diagonal(diagonal)
+	for p := range 6 {
+		for q := range p + 1 {
+			j := hamiltonian.Pair(p, q)
+			f.Column(j, column)
+			if diagonal[j] != f.TwoElectron(p, q, p, q) {
+				t.Errorf("diagonal of pair %d,%d is %v", p, q, diagonal[j])
+			}
+			for r := range 6 {
+				for s := range 6 {
+					if column[hamiltonian.Pair(r, s)] != f.TwoElectron(r, s, p, q) {
+						t.Errorf("element %d,%d,%d,%d is %v", r, s, p, q, column[hamiltonian.Pair(r, s)])
+					}
+				}
+			}
 		}
 	}
 }

@@ -126,14 +126,22 @@ func (s *Space) Normal(h *hamiltonian.Hamiltonian) *mat.Dense {
 	for spin := range 2 {
 		s.OneBody(a, spin, h.OneBody[spin].At)
 	}
-	for g, sign := range h.Factors.Sign {
-		l := s.factor(h, g)
-		for sigma := range 2 {
-			for tau := range 2 {
-				s.TwoBody(a, sigma, tau, func(p, q, r, u int) float64 {
-					return sign * l[sigma].At(p, q) * l[tau].At(r, u)
-				})
+	m := s.Orbitals
+	for sigma := range 2 {
+		for tau := range 2 {
+			c := make([]float64, m*m*m*m)
+			for g, sign := range h.Factors.Sign {
+				l := s.factor(h, g)
+				left, right := l[sigma].RawMatrix().Data, l[tau].RawMatrix().Data
+				for i, x := range left {
+					if x != 0 {
+						for j, y := range right {
+							c[i*m*m+j] += sign * x * y
+						}
+					}
+				}
 			}
+			s.TwoBody(a, sigma, tau, func(p, q, r, u int) float64 { return c[((p*m+q)*m+r)*m+u] })
 		}
 	}
 	return a
