@@ -25,13 +25,19 @@ func New(sector hamiltonian.Sector) *Space {
 		panic("fock: too many orbitals")
 	}
 	s := &Space{Sector: sector, place: map[uint64]int{}}
-	for down := range uint64(1) << sector.Orbitals {
-		for up := range uint64(1) << sector.Orbitals {
-			if bits.OnesCount64(up) == sector.Up && bits.OnesCount64(down) == sector.Down {
-				state := up | down<<sector.Orbitals
-				s.place[state] = len(s.states)
-				s.states = append(s.states, state)
+	var strings [2][]uint64
+	for spin := range strings {
+		for bit := range uint64(1) << sector.Orbitals {
+			if bits.OnesCount64(bit) == sector.Electrons(spin) {
+				strings[spin] = append(strings[spin], bit)
 			}
+		}
+	}
+	for _, down := range strings[hamiltonian.Down] {
+		for _, up := range strings[hamiltonian.Up] {
+			state := up | down<<sector.Orbitals
+			s.place[state] = len(s.states)
+			s.states = append(s.states, state)
 		}
 	}
 	return s
