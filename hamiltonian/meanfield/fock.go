@@ -3,6 +3,7 @@ package meanfield
 import (
 	"math"
 	"runtime"
+	"slices"
 	"sync"
 	"sync/atomic"
 
@@ -39,7 +40,20 @@ func (d factored) columns() int {
 // builder computes two-body parts of Fock matrices. It is safe for concurrent
 // use.
 type builder struct {
-	h *hamiltonian.Hamiltonian
+	h       *hamiltonian.Hamiltonian
+	scratch *sync.Pool // of *scratch
+}
+
+// scratch holds the buffers of one worker.
+type scratch struct {
+	l      *mat.Dense   // one factor, M×M
+	za, zb [2][]float64 // half-transformed factors of one tile by spin, k×M each
+}
+
+func newBuilder(h *hamiltonian.Hamiltonian) builder {
+	return builder{h, &sync.Pool{New: func() any {
+		return &scratch{l: mat.NewDense(h.Orbitals, h.Orbitals, nil)}
+	}}}
 }
 
 // twoBody returns, for each spin,
@@ -66,12 +80,14 @@ func (b builder) twoBody(d [2]factored) [2]*mat.SymDense {
 	var wg sync.WaitGroup
 	for range min(len(parts), runtime.GOMAXPROCS(0)) {
 		wg.Go(func() {
+			buffers := b.scratch.Get().(*scratch)
+			defer b.scratch.Put(buffers)
 			for {
 				i := int(next.Add(1)) - 1
 				if i >= len(parts) {
 					return
 				}
-				parts[i] = b.sumPart(d, packed, spins, i*f.Count()/len(parts), (i+1)*f.Count()/len(parts))
+				parts[i] = b.sumPart(buffers, d, packed, spins, i*f.Count()/len(parts), (i+1)*f.Count()/len(parts))
 			}
 		})
 	}
@@ -124,7 +140,7 @@ type part struct {
 	exchange [2][]float64 // M×M, of which only the symmetric part counts
 }
 
-func (b builder) sumPart(d [2]factored, density [2][]float64, spins, from, to int) *part {
+func (b builder) sumPart(buffers *scratch, d [2]factored, density [2][]float64, spins, from, to int) *part {
 	m, f := b.h.Orbitals, b.h.Factors
 	out := &part{}
 	for spin := range spins {
@@ -144,45 +160,67 @@ func (b builder) sumPart(d [2]factored, density [2][]float64, spins, from, to in
 			floats.AddScaled(out.direct[spin], f.Sign[g]*rho, f.Row(g, spin))
 		}
 	}
-	for spin := range spins {
-		if d[spin].columns() > 0 {
-			out.exchange[spin] = b.sumExchange(d[spin], spin, from, to)
-		}
-	}
+	out.exchange = b.sumExchange(buffers, d, spins, from, to)
 	return out
 }
 
-// sumExchange returns Σ_g s_g L D L over a run of factors, as a matrix whose
-// symmetric part is meant. With Z_A = Aᵀ L and L of parity π, L A Bᵀ L =
-// π Z_Aᵀ Z_B.
-func (b builder) sumExchange(d factored, spin, from, to int) []float64 {
-	m, f, k := b.h.Orbitals, b.h.Factors, d.columns()
-	sum := make([]float64, m*m)
-	tile := min(max(1, tileFloats/(k*m)), to-from)
-	l := mat.NewDense(m, m, nil)
-	raw := l.RawMatrix().Data
-	za := make([]float64, tile*k*m)
-	zb := za
-	if d.a != d.b {
-		zb = make([]float64, tile*k*m)
+// sumExchange returns, per spin, Σ_g s_g L D L over a run of factors, as a matrix
+// whose symmetric part is meant; nil for a zero density. With Z_A = Aᵀ L and L of
+// parity π, L A Bᵀ L = π Z_Aᵀ Z_B.
+func (b builder) sumExchange(buffers *scratch, d [2]factored, spins, from, to int) [2][]float64 {
+	m, f := b.h.Orbitals, b.h.Factors
+	var sums, at, bt [2][]float64
+	widest := max(d[hamiltonian.Up].columns(), d[hamiltonian.Down].columns())
+	if widest == 0 {
+		return sums
 	}
-	at, bt := transposed(d.a), []float64(nil)
-	if d.a != d.b {
-		bt = transposed(d.b)
+	tile := min(max(1, tileFloats/(widest*m)), to-from)
+	for spin := range spins {
+		k := d[spin].columns()
+		if k == 0 {
+			continue
+		}
+		sums[spin] = make([]float64, m*m)
+		at[spin] = transposed(d[spin].a)
+		buffers.za[spin] = slices.Grow(buffers.za[spin][:0], tile*k*m)[:tile*k*m]
+		if d[spin].a != d[spin].b {
+			bt[spin] = transposed(d[spin].b)
+			buffers.zb[spin] = slices.Grow(buffers.zb[spin][:0], tile*k*m)[:tile*k*m]
+		}
 	}
+	l := buffers.l.RawMatrix().Data
 	for g := from; g < to; {
 		weight := f.Sign[g] * f.Parity(g)
 		n := 0
 		for ; n < tile && g < to && f.Sign[g]*f.Parity(g) == weight; n, g = n+1, g+1 {
-			f.Unpack(l, g, spin)
-			linalg.Gemm(false, false, k, m, m, 1, at, m, raw, m, 0, za[n*k*m:], m)
-			if bt != nil {
-				linalg.Gemm(false, false, k, m, m, 1, bt, m, raw, m, 0, zb[n*k*m:], m)
+			unpacked := false
+			for spin := range spins {
+				k := d[spin].columns()
+				if k == 0 {
+					continue
+				}
+				if !unpacked || !f.SpinFree() {
+					f.Unpack(buffers.l, g, spin)
+					unpacked = true
+				}
+				linalg.Gemm(false, false, k, m, m, 1, at[spin], m, l, m, 0, buffers.za[spin][n*k*m:], m)
+				if bt[spin] != nil {
+					linalg.Gemm(false, false, k, m, m, 1, bt[spin], m, l, m, 0, buffers.zb[spin][n*k*m:], m)
+				}
 			}
 		}
-		linalg.Gemm(true, false, m, m, n*k, weight, za, m, zb, m, 1, sum, m)
+		for spin := range spins {
+			k, zb := d[spin].columns(), buffers.za[spin]
+			if k == 0 {
+				continue
+			}
+			if bt[spin] != nil {
+				zb = buffers.zb[spin]
+			}
+			linalg.Gemm(true, false, m, m, n*k, weight, buffers.za[spin], m, zb, m, 1, sums[spin], m)
+		}
 	}
-	return sum
+	return sums
 }
 
 func transposed(a *mat.Dense) []float64 {
@@ -204,7 +242,7 @@ func Fock(h *hamiltonian.Hamiltonian, densities [2]*mat.SymDense) [2]*mat.SymDen
 		}
 		d[spin] = factorDensity(density, h.Orbitals)
 	}
-	return addOneBody(h, builder{h}.twoBody(d))
+	return addOneBody(h, newBuilder(h).twoBody(d))
 }
 
 // factorDensity writes a symmetric matrix as ½(A Bᵀ + B Aᵀ) by its eigenvectors.
@@ -259,7 +297,7 @@ func addOneBody(h *hamiltonian.Hamiltonian, g [2]*mat.SymDense) [2]*mat.SymDense
 // electrons; both may be the same pointer.
 func Energy(h *hamiltonian.Hamiltonian, occupied [2]*mat.Dense) float64 {
 	d := densities(occupied)
-	return determinantEnergy(h, d, addOneBody(h, builder{h}.twoBody(d)))
+	return determinantEnergy(h, d, addOneBody(h, newBuilder(h).twoBody(d)))
 }
 
 func densities(occupied [2]*mat.Dense) [2]factored {

@@ -154,8 +154,8 @@ type search struct {
 	o      Options
 	best   *found
 	starts int
-	failed int       // starts that did not converge
-	norm   float64   // smallest gradient norm of those
+	norm   float64   // smallest gradient norm of the starts that did not converge
+	missed float64   // lowest energy of those
 	seen   []float64 // energies of the stationary points met so far
 }
 
@@ -171,7 +171,7 @@ type found struct {
 const sameEnergy = 1e-9
 
 func (s *search) run() error {
-	s.norm = math.Inf(1)
+	s.norm, s.missed = math.Inf(1), math.Inf(1)
 	for start, err := range s.eachStart() {
 		if err != nil {
 			return err
@@ -203,8 +203,7 @@ func (s *search) try(c [2]*mat.Dense) error {
 		iterations += steps
 		norm := s.gradientNorm(pt)
 		if !(norm < s.o.Tolerance) {
-			s.failed++
-			s.norm = min(s.norm, norm)
+			s.norm, s.missed = min(s.norm, norm), min(s.missed, pt.energy)
 			return nil
 		}
 		if s.met(pt.energy) {
@@ -266,8 +265,8 @@ func (s *search) solution() (*Solution, error) {
 	if !out.Stable {
 		out.Notes = append(out.Notes, fmt.Sprintf("%s: the orbital Hessian has a negative eigenvalue, %.1e, with no lower point along it", s.kind, s.best.mode))
 	}
-	if s.failed > 0 {
-		out.Notes = append(out.Notes, fmt.Sprintf("%s: %d of %d starts did not converge (smallest gradient norm %.1e); the lowest of the others was kept", s.kind, s.failed, s.starts, s.norm))
+	if s.missed < pt.energy-sameEnergy {
+		out.Notes = append(out.Notes, fmt.Sprintf("%s: a start that did not converge reached %.8f, below the solution kept: a lower one exists", s.kind, s.missed))
 	}
 	if s.kind != UHF {
 		outer := newProblem(s.h, UHF)

@@ -7,6 +7,10 @@ import (
 	"gonum.org/v1/gonum/floats"
 )
 
+// smallestRadius is the trust radius, in scaled angles, at which Newton's method
+// gives up.
+const smallestRadius = 1e-9
+
 // newton goes downhill by a trust-region Newton method whose steps come from
 // conjugate gradients truncated at the region's edge or at negative curvature
 // (Steihaug, SIAM J. Numer. Anal. 20, 626 (1983)), in angles scaled by the
@@ -38,10 +42,11 @@ func (p *problem) newton(ctx context.Context, start *point, tolerance float64, l
 		if math.Abs(predicted) < 1e-12*max(1, math.Abs(pt.energy)) {
 			// The change drowns in rounding: judge by the gradient.
 			p.gradient(next, hstep)
-			if !(floats.Norm(hstep, 2) < norm) {
+			if floats.Norm(hstep, 2) < norm {
+				pt = p.canonical(next)
+			} else if radius = 0.25 * min(radius, scaledNorm(step, scale)); radius < smallestRadius {
 				return pt, iteration, nil
 			}
-			pt = p.canonical(next)
 			continue
 		}
 		ratio := change / predicted
@@ -53,7 +58,7 @@ func (p *problem) newton(ctx context.Context, start *point, tolerance float64, l
 		}
 		if ratio > 1e-3 {
 			pt = p.canonical(next)
-		} else if radius < 1e-10 {
+		} else if radius < smallestRadius {
 			return pt, iteration, nil
 		}
 	}

@@ -31,7 +31,7 @@ type rotations struct {
 }
 
 func newProblem(h *hamiltonian.Hamiltonian, kind Kind) *problem {
-	p := &problem{h: h, build: builder{h}, kind: kind}
+	p := &problem{h: h, build: newBuilder(h), kind: kind}
 	m := h.Orbitals
 	if kind == UHF {
 		p.sets = []rotations{
