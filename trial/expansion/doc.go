@@ -1,0 +1,3 @@
+// Package expansion is the trial source of a CI expansion over core and active
+// orbitals.
+package expansion

@@ -1,0 +1,346 @@
+package expansion
+
+import (
+	"math"
+
+	"leadline/hamiltonian/linalg"
+	"leadline/trial"
+)
+
+// form is the pivoted form of one spin of the walkers of a tile: one block for
+// each walker in every array.
+type form struct {
+	support  []float64    // S†φ: rows (walker, column, part), core+active numbers
+	exchange []complex128 // S†φ of one walker while columns and rows are exchanged
+	inverse  []complex128 // (φ_occ)⁻¹, columns of the walker × occupied orbitals (core, reference)
+	theta    []complex128 // Θ, particles × occupied orbitals
+	active   []complex128 // θ, its columns of the reference: particles × holes
+	frames   []*frame     // nil where core or active rows have no full rank
+	spare    []frame
+	log      []float64 // ln |det φ_occ|
+	phase    []complex128
+	minors   []complex128
+	strings  []float64 // d: rows 2i and 2i+1, one number for each string
+	row, col []int     // pivots, in the order of occupied orbitals
+	taken    []bool    // rows, then columns
+}
+
+// side adds to a form what comes from the coefficients and the other spin.
+type side struct {
+	*form
+	dual     []float64    // y: rows 2i and 2i+1, one number for each string
+	adjoint  []complex128 // y of one walker in the order of the minors
+	gradient []complex128 // W = ∂ ln F/∂θ, particles × holes
+	planes   []float64    // left factor of a density
+	product  []float64
+	particle []complex128
+}
+
+// prepare computes the pivoted form of the walkers of one spin, their minors and
+// the strings' values d. Flops for each walker: 4·M·N·(nc+no) for S†φ, 8·N²·(nc+no)
+// for the exchange and 8·Σ_k k·C(ne,k)·C(no−ne,k) for the minors.
+func (s *Source) prepare(a *form, w trial.Walkers, spin int) {
+	space := s.spaces[spin]
+	n, ns, np := s.sector.Electrons(spin), s.supported(), s.active-space.electrons
+	count := w.Count
+	s.projectOnSupport(a, w, spin)
+	a.exchange = trial.Grow(a.exchange, ns*n)
+	a.inverse = trial.Grow(a.inverse, count*n*n)
+	a.theta = trial.Grow(a.theta, count*np*n)
+	a.active = trial.Grow(a.active, count*space.excitations())
+	a.minors = trial.Grow(a.minors, count*space.minors())
+	a.strings = trial.Grow(a.strings, 2*count*len(space.masks))
+	a.log, a.phase = trial.Grow(a.log, count), trial.Grow(a.phase, count)
+	a.frames = trial.Grow(a.frames, count)
+	for len(a.spare) < count {
+		a.spare = append(a.spare, frame{})
+	}
+	for i := range count {
+		re := a.strings[2*i*len(space.masks):][:len(space.masks)]
+		im := a.strings[(2*i+1)*len(space.masks):][:len(space.masks)]
+		reference, ok := s.pivot(a, i, spin)
+		if !ok {
+			a.frames[i] = nil
+			clear(re)
+			clear(im)
+			continue
+		}
+		f := space.frame(reference, &a.spare[i])
+		a.frames[i] = f
+		s.arrange(a, i, spin, f)
+		m := a.minors[i*space.minors():][:space.minors()]
+		space.computeMinors(m, a.active[i*space.excitations():], f.levels)
+		for k, at := range f.place {
+			v, sign := m[at], f.sign[k]
+			re[k], im[k] = sign*real(v), sign*imag(v)
+		}
+	}
+}
+
+// projectOnSupport sets a.support.
+func (s *Source) projectOnSupport(a *form, w trial.Walkers, spin int) {
+	n, ns, m := s.sector.Electrons(spin), s.supported(), s.sector.Orbitals
+	a.support = trial.Grow(a.support, w.Count*2*n*ns)
+	if s.columns == nil {
+		for i := range w.Count {
+			columns := w.Spin(i, spin)
+			for r := range 2 * n {
+				copy(a.support[(i*2*n+r)*ns:][:ns], columns[r*m:])
+			}
+		}
+		return
+	}
+	if w.Columns() == n {
+		s.columns.Mul(w.Count*2*n, 1, w.Data, m, 0, a.support, ns)
+		return
+	}
+	for i := range w.Count {
+		s.columns.Mul(2*n, 1, w.Spin(i, spin), m, 0, a.support[i*2*n*ns:], ns)
+	}
+}
+
+// pivot exchanges every column of S†φ with a row: first the core's rows, then
+// those active rows that have the largest elements left, with complete pivoting
+// in both. The exchanged rows then hold (φ_occ)⁻¹, the others φ (φ_occ)⁻¹. It
+// sets log and phase of det φ_occ, rows ascending, and returns the active rows
+// taken as a string; ok is false where the rows' rank is too small or a number is
+// not finite (then log is NaN).
+func (s *Source) pivot(a *form, i, spin int) (reference uint64, ok bool) {
+	n, ns := s.sector.Electrons(spin), s.supported()
+	x := a.exchange[:ns*n]
+	for j := range n {
+		re, im := a.support[(i*n+j)*2*ns:][:ns], a.support[((i*n+j)*2+1)*ns:][:ns]
+		for r := range ns {
+			x[r*n+j] = complex(re[r], im[r])
+		}
+	}
+	a.row, a.col = trial.Grow(a.row, n), trial.Grow(a.col, n)
+	a.taken = trial.Grow(a.taken, ns+n)
+	clear(a.taken)
+	rows, columns := a.taken[:ns], a.taken[ns:]
+	magnitude, phase := 0.0, complex128(1)
+	for step := range n {
+		from, to := 0, s.core
+		if step >= s.core {
+			from, to = s.core, ns
+		}
+		row, col, size := largest(x, n, from, to, rows, columns)
+		if size == 0 {
+			a.log[i], a.phase[i] = math.Inf(-1), 0
+			return 0, false
+		}
+		d := x[row*n+col]
+		absolute := math.Hypot(real(d), imag(d))
+		if math.IsNaN(absolute) || math.IsInf(absolute, 0) {
+			a.log[i], a.phase[i] = math.NaN(), 0
+			return 0, false
+		}
+		magnitude += math.Log(absolute)
+		phase *= complex(real(d)/absolute, imag(d)/absolute)
+		exchange(x, ns, n, row, col)
+		rows[row], columns[col] = true, true
+		a.row[step], a.col[step] = row, col
+		if row >= s.core {
+			reference |= 1 << (row - s.core)
+		}
+	}
+	// Sorting the rows gives the order of occupied orbitals; the sign is that of
+	// the permutation from it to the columns.
+	for k := 1; k < n; k++ {
+		for l := k; l > 0 && a.row[l-1] > a.row[l]; l-- {
+			a.row[l-1], a.row[l] = a.row[l], a.row[l-1]
+			a.col[l-1], a.col[l] = a.col[l], a.col[l-1]
+		}
+	}
+	for k := range n {
+		for l := range k {
+			if a.col[l] > a.col[k] {
+				phase = -phase
+			}
+		}
+	}
+	a.log[i], a.phase[i] = magnitude, phase
+	return reference, true
+}
+
+// largest finds the element of largest |re|+|im| among rows from ≤ r < to and
+// columns not yet taken; the first NaN wins.
+func largest(x []complex128, n, from, to int, rows, columns []bool) (row, col int, size float64) {
+	for r := from; r < to; r++ {
+		if rows[r] {
+			continue
+		}
+		for c, v := range x[r*n : r*n+n] {
+			if columns[c] {
+				continue
+			}
+			a := math.Abs(real(v)) + math.Abs(imag(v))
+			if a > size {
+				row, col, size = r, c, a
+			} else if a != a {
+				return r, c, a
+			}
+		}
+	}
+	return row, col, size
+}
+
+// exchange swaps the roles of one row and one column in y = x·z:
+//
+//	x_rc → 1/x_rc,  x_rj → −x_rj/x_rc,  x_ic → x_ic/x_rc,  x_ij → x_ij − x_ic x_rj/x_rc
+func exchange(x []complex128, rows, n, r, c int) {
+	pivot := x[r*n : r*n+n]
+	inverse := 1 / pivot[c]
+	for j := range pivot {
+		pivot[j] *= -inverse
+	}
+	pivot[c] = inverse
+	for i := range rows {
+		if i == r {
+			continue
+		}
+		row := x[i*n : i*n+n]
+		f := row[c]
+		if f == 0 {
+			continue
+		}
+		row[c] = 0
+		for j, v := range pivot {
+			row[j] += f * v
+		}
+	}
+}
+
+// arrange copies the exchanged matrix of walker i into a.inverse, a.theta and
+// a.active, orbitals in the order core, reference ascending.
+func (s *Source) arrange(a *form, i, spin int, f *frame) {
+	n, ne := s.sector.Electrons(spin), s.spaces[spin].electrons
+	np := s.active - ne
+	x := a.exchange
+	inverse := a.inverse[i*n*n:][:n*n]
+	for k, row := range a.row[:n] {
+		from, to := x[row*n:row*n+n], inverse[a.col[k]*n:][:n]
+		for o, col := range a.col[:n] {
+			to[o] = from[col]
+		}
+	}
+	theta := a.theta[i*np*n:][:np*n]
+	active := a.active[i*np*ne:][:np*ne]
+	for p, orbital := range f.orbital[ne:] {
+		from, to := x[(s.core+orbital)*n:][:n], theta[p*n:][:n]
+		for o, col := range a.col[:n] {
+			to[o] = from[col]
+		}
+		copy(active[p*ne:], to[s.core:])
+	}
+}
+
+// weigh turns the dual vectors y into W = ∂ ln F/∂θ and returns
+// F = Σ_I d_I y_I for walker i; a zero or unusable F leaves W zero.
+func (s *Source) weigh(a *side, i, spin int) complex128 {
+	space := s.spaces[spin]
+	nx := space.excitations()
+	w := a.gradient[i*nx:][:nx]
+	f := a.frames[i]
+	if f == nil {
+		clear(w)
+		return 0
+	}
+	ns := len(space.masks)
+	total := overlapOf(a.strings[2*i*ns:][:2*ns], a.dual[2*i*ns:][:2*ns])
+	if total == 0 || total != total {
+		clear(w)
+		return total
+	}
+	m := a.minors[i*space.minors():][:space.minors()]
+	space.adjoint(a.adjoint, a.dual[2*i*ns:][:2*ns], f)
+	space.gradient(w, a.adjoint, m, a.active[i*nx:], f.levels)
+	inverse := 1 / total
+	for k := range w {
+		w[k] *= inverse
+	}
+	return total
+}
+
+// adjoint writes a dual vector, real then imaginary parts, in the order of the
+// minors.
+func (s *space) adjoint(g []complex128, dual []float64, f *frame) {
+	n := len(s.masks)
+	re, im := dual[:n], dual[n:2*n]
+	clear(g[:s.offset[f.levels+1]])
+	for k, at := range f.place {
+		g[at] = complex(f.sign[k]*re[k], f.sign[k]*im[k])
+	}
+}
+
+// overlapOf returns Σ_I d_I y_I; each holds real, then imaginary parts.
+func overlapOf(d, y []float64) complex128 {
+	n := len(d) / 2
+	dr, di, yr, yi := d[:n], d[n:], y[:n], y[n:]
+	var re, im float64
+	for k, v := range dr {
+		re += v*yr[k] - di[k]*yi[k]
+		im += v*yi[k] + di[k]*yr[k]
+	}
+	return complex(re, im)
+}
+
+// leftFactor sets a.planes to G′ with D = G′ φᵀ, (core+active)×N, real then
+// imaginary part:
+//
+//	G′_a = Σ_i W_ai (φ_occ)⁻¹_·i,   G′_o = (φ_occ)⁻¹_·o − Σ_a Θ_ao G′_a
+func (s *Source) leftFactor(a *side, i, spin int) {
+	n, ns, ne := s.sector.Electrons(spin), s.supported(), s.spaces[spin].electrons
+	np := s.active - ne
+	f := a.frames[i]
+	a.planes = trial.Grow(a.planes, 2*ns*n)
+	re, im := a.planes[:ns*n], a.planes[ns*n:]
+	inverse, theta := a.inverse[i*n*n:][:n*n], a.theta[i*np*n:][:np*n]
+	w := a.gradient[i*np*ne:][:np*ne]
+	a.particle = trial.Grow(a.particle, np*n) // G′ of the particles
+	row := a.particle
+	for p := range np {
+		for k := range n {
+			var sum complex128
+			for j, v := range w[p*ne : p*ne+ne] {
+				sum += v * inverse[k*n+s.core+j]
+			}
+			row[p*n+k] = sum
+			at := (s.core+f.orbital[ne+p])*n + k
+			re[at], im[at] = real(sum), imag(sum)
+		}
+	}
+	for o := range n {
+		orbital := o
+		if o >= s.core {
+			orbital = s.core + f.orbital[o-s.core]
+		}
+		for k := range n {
+			sum := inverse[k*n+o]
+			for p := range np {
+				sum -= theta[p*n+o] * row[p*n+k]
+			}
+			re[orbital*n+k], im[orbital*n+k] = real(sum), imag(sum)
+		}
+	}
+}
+
+// density writes D = G′ φᵀ of walker i, rows of M.
+func (s *Source) density(a *side, w trial.Walkers, i, spin int, re, im []float64) {
+	n, ns, m := s.sector.Electrons(spin), s.supported(), s.sector.Orbitals
+	a.product = trial.Grow(a.product, 4*ns*m)
+	linalg.Gemm(false, false, 2*ns, 2*m, n, 1, a.planes, n, w.Spin(i, spin), 2*m, 0, a.product, 2*m)
+	combine(re, im, a.product, ns, m)
+}
+
+// combine turns the product [Re; Im]·[Re | Im], 2r×2c, into complex planes, r×c.
+func combine(re, im, product []float64, rows, columns int) {
+	for r := range rows {
+		upper, lower := product[2*columns*r:][:2*columns], product[2*columns*(rows+r):][:2*columns]
+		dRe, dIm := re[r*columns:][:columns], im[r*columns:][:columns]
+		for q := range dRe {
+			dRe[q] = upper[q] - lower[columns+q]
+			dIm[q] = upper[columns+q] + lower[q]
+		}
+	}
+}
