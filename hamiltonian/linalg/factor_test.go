@@ -159,8 +159,8 @@ func TestOrthonormalize(t *testing.T) {
 			if err != nil {
 				t.Fatal(err)
 			}
-			r := product(rows, cols, q, a, stride) // Q†A = R
-			one := product(rows, cols, q, q, stride)
+			r := gram(rows, cols, q, a, stride) // Q†A = R
+			one := gram(rows, cols, q, q, stride)
 			var sum float64
 			for i := range cols {
 				sum += math.Log(real(r[i*cols+i]))
@@ -203,7 +203,7 @@ func TestOrthonormalize(t *testing.T) {
 	}
 }
 
-func product(rows, cols int, a, b []float64, stride int) []complex128 {
+func gram(rows, cols int, a, b []float64, stride int) []complex128 {
 	out := make([]complex128, cols*cols)
 	for i := range cols {
 		for j := range cols {

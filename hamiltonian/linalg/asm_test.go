@@ -1,0 +1,5 @@
+//go:build !noasm
+
+package linalg
+
+const noasm = false

@@ -1,0 +1,60 @@
+package linalg
+
+import (
+	"fmt"
+	"math/rand/v2"
+	"testing"
+)
+
+// Shapes m×n×k of the walk's products: exp(X)·φ for real and imaginary parts
+// stacked, and fields, half-rotated factors and the supermatrix against a tile
+// of walkers.
+var (
+	squares = [][3]int{{64, 64, 64}, {256, 256, 256}, {512, 512, 512}, {1024, 1024, 1024}}
+	taylor  = [][3]int{{20, 4, 20}, {60, 20, 60}, {100, 20, 100}, {200, 40, 200}, {200, 80, 200}, {400, 160, 400}}
+	tiles   = [][3]int{{64, 5050, 500}, {32, 5050, 500}, {64, 500, 2000}, {64, 2000, 2000}, {64, 20000, 1000}}
+)
+
+func BenchmarkGemm(b *testing.B)   { benchmarkGemm[float64](b) }
+func BenchmarkGemm32(b *testing.B) { benchmarkGemm[float32](b) }
+
+func benchmarkGemm[T float](b *testing.B) {
+	rng := rand.New(rand.NewPCG(1, 2))
+	for _, tier := range tiers() {
+		for _, shape := range append(append([][3]int(nil), squares...), taylor...) {
+			m, n, k := shape[0], shape[1], shape[2]
+			x, y, z := random[T](rng, m*k), random[T](rng, k*n), make([]T, m*n)
+			b.Run(fmt.Sprintf("%v/%dx%dx%d", tier, m, n, k), func(b *testing.B) {
+				for b.Loop() {
+					product(tier, false, false, m, n, k, 1, x, k, y, n, 0, z, n)
+				}
+				gflops(b, 2*float64(m)*float64(n)*float64(k))
+			})
+		}
+	}
+}
+
+func BenchmarkPacked(b *testing.B)   { benchmarkPacked[float64](b) }
+func BenchmarkPacked32(b *testing.B) { benchmarkPacked[float32](b) }
+
+func benchmarkPacked[T float](b *testing.B) {
+	rng := rand.New(rand.NewPCG(1, 3))
+	for _, tier := range tiers()[1:] {
+		for _, shape := range tiles {
+			m, n, k := shape[0], shape[1], shape[2]
+			x, y, z := random[T](rng, m*k), random[T](rng, k*n), make([]T, m*n)
+			p := pack(tier, false, k, n, y, n)
+			b.Run(fmt.Sprintf("%v/%dx%dx%d", tier, m, n, k), func(b *testing.B) {
+				for b.Loop() {
+					p.multiply(m, 1, x, k, 0, z, n)
+				}
+				gflops(b, 2*float64(m)*float64(n)*float64(k))
+			})
+		}
+	}
+}
+
+// gflops reports the rate of an operation of so many flops.
+func gflops(b *testing.B, flops float64) {
+	b.ReportMetric(flops*float64(b.N)/b.Elapsed().Seconds()*1e-9, "GFLOP/s")
+}
