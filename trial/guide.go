@@ -66,6 +66,9 @@ func (g *Guide) Evaluate(m *Mixed, w Walkers) {
 // LocalEnergies sets m.Energy for the walkers last evaluated into m.
 func (g *Guide) LocalEnergies(m *Mixed, w Walkers) { g.energies.LocalEnergies(m, w) }
 
+// Support returns the orbitals that densities are half rotated onto.
+func (g *Guide) Support() Support { return g.rotated.Support }
+
 // Expectations returns the trial's own expectation values, if it can give them.
 func (g *Guide) Expectations() (Expectations, bool) {
 	e, ok := g.Source.(Expectations)

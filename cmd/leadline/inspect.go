@@ -1,0 +1,192 @@
+package main
+
+import (
+	"bytes"
+	"context"
+	"encoding/json"
+	"fmt"
+	"io"
+	"os"
+	"path/filepath"
+	"strings"
+
+	"github.com/spf13/cobra"
+
+	"leadline/cmd/leadline/job"
+	"leadline/hamiltonian"
+	"leadline/hamiltonian/fcidump"
+	"leadline/hamiltonian/meanfield"
+)
+
+func inspectCommand(stderr io.Writer) *cobra.Command {
+	quiet := false
+	c := &cobra.Command{
+		Use:   "inspect FILE...",
+		Short: "Say what files hold, checked as they would be on use",
+		Args:  arguments(cobra.MinimumNArgs(1)),
+		RunE: func(c *cobra.Command, args []string) error {
+			refused := 0
+			for i, name := range args {
+				if i > 0 {
+					fmt.Fprintln(c.OutOrStdout())
+				}
+				if err := inspect(c.Context(), name, c.OutOrStdout(), display{out: stderr, quiet: quiet}); err != nil {
+					if c.Context().Err() != nil {
+						return err
+					}
+					fmt.Fprintf(stderr, "leadline: %v\n", err)
+					refused++
+				}
+			}
+			if refused > 0 {
+				return exitError{exitFailed}
+			}
+			return nil
+		},
+	}
+	c.Flags().BoolVar(&quiet, "quiet", false, "no progress on stderr")
+	return c
+}
+
+// inspect finds out what a file is by its first bytes.
+func inspect(ctx context.Context, name string, out io.Writer, shown display) error {
+	info, err := os.Stat(name)
+	if err != nil {
+		return err
+	}
+	if info.IsDir() {
+		return inspectResults(name, out)
+	}
+	head, err := firstBytes(name)
+	if err != nil {
+		return err
+	}
+	switch {
+	case len(head) == 0:
+		return fmt.Errorf("%s: is empty", name)
+	case strings.HasSuffix(name, ".toml"):
+		return inspectJob(name, out)
+	case bytes.HasPrefix(head, []byte{0x1f, 0x8b}), bytes.HasPrefix(bytes.TrimSpace(head), []byte("&")):
+		return inspectIntegrals(ctx, name, out, shown)
+	}
+	return fmt.Errorf("%s: is none of: integral file, job file, directory of results", name)
+}
+
+func firstBytes(name string) ([]byte, error) {
+	file, err := os.Open(name)
+	if err != nil {
+		return nil, err
+	}
+	defer file.Close()
+	head := make([]byte, 512)
+	n, err := io.ReadFull(file, head)
+	if err == io.EOF || err == io.ErrUnexpectedEOF {
+		err = nil
+	}
+	return head[:n], err
+}
+
+// inspectIntegrals reads an integral file and solves its mean fields.
+func inspectIntegrals(ctx context.Context, name string, out io.Writer, shown display) error {
+	in := &inputs{hashes: map[string]string{}}
+	file, size, err := in.open(name)
+	if err != nil {
+		return err
+	}
+	defer file.Close()
+	tell := shown.stage("reading "+filepath.Base(name), size)
+	integrals, err := fcidump.ReadWithin(ctx, file, name, readingMemory(), tell)
+	if err != nil {
+		return err
+	}
+	h, residual, err := integrals.Hamiltonian(ctx, 1e-6)
+	if err != nil {
+		return fmt.Errorf("%s: %w", name, err)
+	}
+	fmt.Fprintf(out, "%s: integral file\n", name)
+	fmt.Fprintf(out, "  %d orbitals, %d up and %d down electrons, constant energy %s E_h\n", h.Orbitals, h.Up, h.Down, quoted(h.Constant, 0))
+	fmt.Fprintf(out, "  %d factors, largest error on a diagonal integral %.1e E_h\n", h.Factors.Count(), residual)
+	return inspectMeanField(ctx, h, out)
+}
+
+// inspectMeanField prints energies, spin and orbital energies of the mean fields.
+func inspectMeanField(ctx context.Context, h *hamiltonian.Hamiltonian, out io.Writer) error {
+	kinds := []meanfield.Kind{meanfield.RHF, meanfield.UHF}
+	if h.Up != h.Down {
+		kinds[0] = meanfield.ROHF
+	}
+	for _, kind := range kinds {
+		s, err := meanfield.Solve(ctx, h, kind, meanfield.Options{})
+		if err != nil {
+			return fmt.Errorf("%v: %w", kind, err)
+		}
+		fmt.Fprintf(out, "\n  %-4s energy %s E_h, <S^2> = %.4f, %d iterations\n", strings.ToUpper(kind.String()), quoted(s.Energy, 0), s.SpinSquared, s.Iterations)
+		for _, note := range s.Notes {
+			fmt.Fprintf(out, "    note: %s\n", note)
+		}
+		printOrbitalEnergies(out, s)
+	}
+	return nil
+}
+
+func printOrbitalEnergies(out io.Writer, s *meanfield.Solution) {
+	spins := []int{hamiltonian.Up, hamiltonian.Down}
+	if s.Kind != meanfield.UHF {
+		spins = spins[:1]
+	}
+	for _, spin := range spins {
+		label := ""
+		if s.Kind == meanfield.UHF {
+			label = [2]string{" up", " down"}[spin]
+		}
+		fmt.Fprintf(out, "    orbital energies%s, E_h (occupied | empty)\n", label)
+		occupied := s.Sector.Electrons(spin)
+		for i, e := range s.OrbitalEnergies[spin] {
+			switch {
+			case i%8 == 0:
+				fmt.Fprintf(out, "     ")
+			case i == occupied:
+				fmt.Fprintf(out, " |")
+			}
+			fmt.Fprintf(out, " %10s", minus(fmt.Sprintf("%.5f", e)))
+			if i%8 == 7 || i == len(s.OrbitalEnergies[spin])-1 {
+				fmt.Fprintln(out)
+			}
+		}
+	}
+}
+
+// inspectJob checks a job file and prints the job as resolved.
+func inspectJob(name string, out io.Writer) error {
+	in := &inputs{dir: filepath.Dir(name), hashes: map[string]string{}}
+	text, err := in.read(filepath.Base(name))
+	if err != nil {
+		return err
+	}
+	j, err := job.Parse(text, name)
+	if err != nil {
+		return err
+	}
+	fmt.Fprintf(out, "%s: job, as resolved\n\n", name)
+	return j.Write(out)
+}
+
+// inspectResults prints the summary of a directory of results.
+func inspectResults(dir string, out io.Writer) error {
+	text, err := os.ReadFile(filepath.Join(dir, summaryFile))
+	if err != nil {
+		return fmt.Errorf("%s: holds no %s: is it a directory of results?", dir, summaryFile)
+	}
+	var s summary
+	if err := json.Unmarshal(text, &s); err != nil {
+		return fmt.Errorf("%s: %w", filepath.Join(dir, summaryFile), err)
+	}
+	fmt.Fprintf(out, "%s: results of %q, %s\n", dir, s.Title, s.Status)
+	if s.Energy != nil && s.Error != nil {
+		fmt.Fprintf(out, "  energy %s %s (one standard error, statistics only)\n", quoted(*s.Energy, *s.Error), symbol(s.Unit))
+	}
+	for _, w := range s.Warnings {
+		fmt.Fprintf(out, "  %-8s %s: %s\n", w.Level, w.Check, w.Text)
+	}
+	return nil
+}

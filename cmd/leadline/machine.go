@@ -1,0 +1,53 @@
+package main
+
+import (
+	"bufio"
+	"fmt"
+	"os"
+	"strconv"
+	"strings"
+)
+
+// availableMemory returns the memory that can be used without swapping, in
+// bytes, or 0 where the system does not tell (/proc/meminfo, Linux).
+func availableMemory() int64 {
+	file, err := os.Open("/proc/meminfo")
+	if err != nil {
+		return 0
+	}
+	defer file.Close()
+	for lines := bufio.NewScanner(file); lines.Scan(); {
+		fields := strings.Fields(lines.Text())
+		if len(fields) >= 2 && fields[0] == "MemAvailable:" {
+			kilobytes, _ := strconv.ParseInt(fields[1], 10, 64)
+			return kilobytes << 10
+		}
+	}
+	return 0
+}
+
+// readingMemory bounds what reading an integral file may take.
+func readingMemory() int64 {
+	if m := availableMemory(); m > 0 {
+		return m
+	}
+	return 8 << 30
+}
+
+// checkMemory refuses what is beyond the machine.
+func checkMemory(need int64, what string) error {
+	if have := availableMemory(); have > 0 && need > have {
+		return fmt.Errorf("%s needs about %s of memory, this machine has %s free", what, bytesText(need), bytesText(have))
+	}
+	return nil
+}
+
+func bytesText(n int64) string {
+	switch {
+	case n >= 1<<30:
+		return fmt.Sprintf("%.1f GB", float64(n)/(1<<30))
+	case n >= 1<<20:
+		return fmt.Sprintf("%.0f MB", float64(n)/(1<<20))
+	}
+	return fmt.Sprintf("%.0f kB", float64(n)/(1<<10))
+}

@@ -1,0 +1,160 @@
+package main
+
+import (
+	"encoding/csv"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"io"
+	"math"
+	"os"
+	"path/filepath"
+	"strconv"
+	"strings"
+
+	"leadline/afqmc"
+	"leadline/cmd/leadline/job"
+)
+
+const (
+	summaryFile = "summary.json"
+	seriesFile  = "series.csv"
+	jobFile     = "job.toml"
+)
+
+// summary is the content of summary.json and of --json; null where a thing was
+// not computed.
+type summary struct {
+	Title             string            `json:"title"`
+	Status            afqmc.Status      `json:"status"`
+	Energy            *float64          `json:"energy"`
+	Error             *float64          `json:"error"`
+	Unit              string            `json:"unit"`
+	MeanFieldEnergy   *float64          `json:"mean_field_energy"`
+	TrialEnergy       *float64          `json:"trial_energy"`
+	TrialSpinSquared  *float64          `json:"trial_spin_squared"`
+	ExactEnergy       *float64          `json:"exact_energy"`
+	ConstantEnergy    float64           `json:"constant_energy"`
+	Orbitals          int               `json:"orbitals"`
+	Up                int               `json:"up"`
+	Down              int               `json:"down"`
+	Factors           int               `json:"factors"`
+	FactorResidual    float64           `json:"factor_residual"`
+	Walkers           int               `json:"walkers"`
+	TimeStep          float64           `json:"time_step"`
+	ImaginaryTime     float64           `json:"imaginary_time"`
+	AutocorrelationTm *float64          `json:"autocorrelation_time"`
+	Seed              int64             `json:"seed"`
+	Kernel            string            `json:"kernel"`
+	Inputs            map[string]string `json:"inputs"`
+	Warnings          []afqmc.Warning   `json:"warnings"`
+	Figures           *afqmc.Figures    `json:"figures"`
+	Failure           string            `json:"failure,omitempty"`
+	WallSeconds       float64           `json:"wall_seconds"`
+	Version           string            `json:"version"`
+}
+
+// number returns a pointer to v, nil where it is not finite.
+func number(v float64) *float64 {
+	if math.IsNaN(v) || math.IsInf(v, 0) {
+		return nil
+	}
+	return &v
+}
+
+// worst returns the highest level among the warnings.
+func worst(warnings []afqmc.Warning) afqmc.Level {
+	var level afqmc.Level
+	for _, w := range warnings {
+		switch {
+		case w.Level == afqmc.Stop:
+			return afqmc.Stop
+		case w.Level == afqmc.Caution || level == "":
+			level = w.Level
+		}
+	}
+	return level
+}
+
+// resultDirectory makes the directory for a job's results. Without an explicit
+// name it is named after the job, with a number added where one exists; an
+// explicit one that holds results is refused unless they may be overwritten.
+func resultDirectory(explicit, jobName string, overwrite bool) (string, error) {
+	if explicit == "" {
+		base := strings.TrimSuffix(filepath.Base(jobName), filepath.Ext(jobName))
+		for n := 1; ; n++ {
+			name := base + ".results"
+			if n > 1 {
+				name = fmt.Sprintf("%s.results-%d", base, n)
+			}
+			err := os.Mkdir(name, 0o755)
+			if err == nil || !errors.Is(err, os.ErrExist) {
+				return name, err
+			}
+		}
+	}
+	for _, name := range []string{summaryFile, seriesFile} {
+		path := filepath.Join(explicit, name)
+		if _, err := os.Stat(path); err != nil {
+			continue
+		}
+		if !overwrite {
+			return "", fmt.Errorf("%s: holds results already; choose another directory or add --overwrite", explicit)
+		}
+		if err := os.Remove(path); err != nil {
+			return "", err
+		}
+	}
+	return explicit, os.MkdirAll(explicit, 0o755)
+}
+
+// series writes series.csv row by row; it implements afqmc.Recorder.
+type series struct {
+	file   *os.File
+	writer *csv.Writer
+	show   func(afqmc.Row)
+}
+
+func newSeries(dir string, show func(afqmc.Row)) (*series, error) {
+	file, err := os.Create(filepath.Join(dir, seriesFile))
+	if err != nil {
+		return nil, err
+	}
+	s := &series{file: file, writer: csv.NewWriter(file), show: show}
+	return s, s.writer.Write([]string{"time", "weight", "numerator", "energy", "growth_energy",
+		"effective_walkers", "capped", "killed", "imaginary", "sampled"})
+}
+
+// Record writes one row.
+func (s *series) Record(r afqmc.Row) error {
+	real := func(v float64) string { return strconv.FormatFloat(v, 'g', -1, 64) }
+	sampled := "0"
+	if r.Sampled {
+		sampled = "1"
+	}
+	s.show(r)
+	return s.writer.Write([]string{strconv.FormatFloat(r.Time, 'g', 12, 64), real(r.Weight), real(r.Numerator), real(r.Energy),
+		real(r.Growth), real(r.Effective), strconv.FormatInt(r.Capped, 10), strconv.FormatInt(r.Killed, 10),
+		real(r.Imaginary), sampled})
+}
+
+func (s *series) close() error {
+	s.writer.Flush()
+	return errorsFirst(s.writer.Error(), s.file.Close())
+}
+
+// writeJob writes the job as resolved, with names of files that lead to them
+// from the result directory.
+func writeJob(dir string, j *job.Job) error {
+	return writeFile(filepath.Join(dir, jobFile), j.Write)
+}
+
+func writeSummary(dir string, s *summary) error {
+	return writeFile(filepath.Join(dir, summaryFile), func(w io.Writer) error { return encode(w, s) })
+}
+
+func encode(w io.Writer, v any) error {
+	e := json.NewEncoder(w)
+	e.SetIndent("", "  ")
+	return e.Encode(v)
+}

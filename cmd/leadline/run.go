@@ -1,0 +1,282 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"io"
+	"path/filepath"
+	"runtime"
+	"strings"
+	"time"
+
+	"github.com/spf13/cobra"
+
+	"leadline/afqmc"
+	"leadline/cmd/leadline/job"
+	"leadline/hamiltonian/linalg"
+)
+
+// runFlags are the flags of leadline run.
+type runFlags struct {
+	output    string
+	overwrite bool
+	json      bool
+	seed      int64
+	cores     int
+	quiet     bool
+}
+
+func runCommand(stderr io.Writer) *cobra.Command {
+	var f runFlags
+	c := &cobra.Command{
+		Use:   "run [JOB.toml]",
+		Short: "Do a whole job: Hamiltonian, trial, projection, error analysis",
+		Long: "Do a whole job: Hamiltonian, trial, projection, error analysis.\n" +
+			"Without JOB.toml an embedded example runs, about a minute on two cores.",
+		Args: arguments(cobra.MaximumNArgs(1)),
+		RunE: func(c *cobra.Command, args []string) error {
+			name := ""
+			if len(args) == 1 {
+				name = args[0]
+			}
+			if c.Flags().Changed("seed") && f.seed < 0 {
+				return usageError{fmt.Errorf("--seed is %d, expected zero or more", f.seed)}
+			}
+			if f.cores < 1 {
+				return usageError{fmt.Errorf("--cores is %d, expected at least 1", f.cores)}
+			}
+			return runJob(c.Context(), name, f, c.Flags().Changed("seed"), c.OutOrStdout(), stderr)
+		},
+	}
+	flags := c.Flags()
+	flags.StringVarP(&f.output, "output", "o", "", "directory for the results (default: named after the job)")
+	flags.BoolVar(&f.overwrite, "overwrite", false, "replace results in the directory given by -o")
+	flags.BoolVar(&f.json, "json", false, "print the summary as one JSON object")
+	flags.Int64Var(&f.seed, "seed", 0, "random seed, in place of the job's")
+	flags.IntVar(&f.cores, "cores", runtime.GOMAXPROCS(0), "goroutines that propagate walkers")
+	flags.BoolVar(&f.quiet, "quiet", false, "no progress on stderr")
+	return c
+}
+
+// runJob does one job and prints its result.
+func runJob(ctx context.Context, name string, f runFlags, seeded bool, stdout, stderr io.Writer) error {
+	begun := time.Now()
+	in, text, name, err := openJob(name)
+	if err != nil {
+		return err
+	}
+	j, err := job.Parse(text, name)
+	if err != nil {
+		return err
+	}
+	if seeded {
+		if j, err = j.With(job.Setting{Key: "projection.seed", Value: f.seed}); err != nil {
+			return err
+		}
+	}
+	shown := display{out: stderr, quiet: f.quiet}
+	say := func(format string, args ...any) {
+		if !f.quiet {
+			fmt.Fprintf(stderr, format+"\n", args...)
+		}
+	}
+	say("%s", j.Title)
+	s, err := newSystem(ctx, j, in, shown.stage)
+	if err != nil {
+		return err
+	}
+	h := s.hamiltonian
+	say("%d orbitals, %d up and %d down electrons, %d factors (largest integral error %.1e), %d frozen orbitals",
+		h.Orbitals, h.Up, h.Down, h.Factors.Count(), s.residual, s.frozen)
+	g, err := newGuidance(ctx, j, in, s)
+	if err != nil {
+		return err
+	}
+	say("mean field (%s) %s %s; walkers start from %v with <S^2> = %.4g, kept by the projection", g.reference,
+		quoted(g.meanField, 0), symbol(s.unit), s.start.Kind, s.start.SpinSquared)
+	for _, note := range g.notes {
+		say("note: %s", note)
+	}
+	options := projection(j, f.cores)
+	cost := afqmc.EstimateCost(h, g.guide.Support(), h.SpinFree() && g.start.Equal(), options)
+	say("the walk: %s of memory, %.2g flops in %.2g walker-steps", bytesText(cost.Bytes+afqmc.ExchangeMemory), cost.Flops, float64(cost.Steps))
+	if err := checkMemory(cost.Bytes, "the walk"); err != nil {
+		return err
+	}
+
+	dir, err := resultDirectory(f.output, name, f.overwrite)
+	if err != nil {
+		return err
+	}
+	if err := writeJob(dir, j); err != nil { // checks that the directory can be written, too
+		return err
+	}
+	total := options.Equilibration + options.Length
+	update := shown.open("projecting", int64(1000*total))
+	rows, err := newSeries(dir, func(r afqmc.Row) {
+		state := "equilibrating"
+		if r.Sampled {
+			state = fmt.Sprintf("energy %.4f", r.Energy)
+		}
+		update(int64(1000*r.Time), state)
+	})
+	if err != nil {
+		return err
+	}
+	result, err := afqmc.Run(ctx, g.guide, g.start, options, rows)
+	if closed := rows.close(); err == nil {
+		err = closed
+	}
+	out := s.summary(j, in, g)
+	out.WallSeconds = time.Since(begun).Seconds()
+	if err != nil {
+		out.Status, out.Failure = "failed", err.Error()
+		writeSummary(dir, out)
+		return err
+	}
+	out.add(result)
+	out.Warnings = append(s.warnings, out.Warnings...)
+	if out.Warnings == nil {
+		out.Warnings = []afqmc.Warning{}
+	}
+	if err := writeSummary(dir, out); err != nil {
+		return err
+	}
+	if f.json {
+		err = encode(stdout, out)
+	} else {
+		err = out.print(stdout, s, g, dir)
+	}
+	switch {
+	case err != nil:
+		return err
+	case result.Status == afqmc.StatusInterrupted:
+		return exitError{exitInterrupted}
+	case worst(out.Warnings) == afqmc.Stop:
+		return exitError{exitDoubtful}
+	}
+	return nil
+}
+
+// projection returns the options of the walk.
+func projection(j *job.Job, cores int) afqmc.Options {
+	p := j.Projection
+	o := afqmc.Options{
+		TimeStep:      p.TimeStep,
+		Walkers:       p.Walkers,
+		Equilibration: p.Equilibration,
+		Length:        p.Length,
+		Seed:          uint64(p.Seed),
+		TargetError:   p.TargetError,
+		Cores:         cores,
+	}
+	if p.Cap != nil {
+		o.Cap = afqmc.CapOff
+		if *p.Cap {
+			o.Cap = afqmc.CapOn
+		}
+	}
+	return o
+}
+
+// summary returns what is known before the walk.
+func (s *system) summary(j *job.Job, in *inputs, g *guidance) *summary {
+	h := s.hamiltonian
+	out := &summary{
+		Title:           j.Title,
+		Unit:            s.unit,
+		MeanFieldEnergy: number(g.meanField),
+		ConstantEnergy:  s.constant,
+		Orbitals:        h.Orbitals,
+		Up:              h.Up,
+		Down:            h.Down,
+		Factors:         h.Factors.Count(),
+		FactorResidual:  s.residual,
+		Walkers:         j.Projection.Walkers,
+		TimeStep:        j.Projection.TimeStep,
+		Seed:            j.Projection.Seed,
+		Kernel:          linalg.Kernel(),
+		Inputs:          in.hashes,
+		Warnings:        []afqmc.Warning{},
+		Version:         version(),
+	}
+	if e, ok := g.guide.Expectations(); ok {
+		out.TrialEnergy, out.TrialSpinSquared = number(e.Energy(h)), number(e.SpinSquared())
+	}
+	return out
+}
+
+// add fills in the result of the walk.
+func (out *summary) add(r *afqmc.Result) {
+	out.Status, out.Warnings = r.Status, r.Warnings
+	if !r.Sampled {
+		return
+	}
+	out.Energy, out.Error = number(r.Energy.Mean), number(r.Energy.Error)
+	out.ImaginaryTime = r.Time
+	out.AutocorrelationTm = number(r.Autocorrelation)
+	out.Figures = &r.Figures
+}
+
+// print writes the result for a person, ready to quote.
+func (out *summary) print(w io.Writer, s *system, g *guidance, dir string) error {
+	var b strings.Builder
+	unit := symbol(out.Unit)
+	fmt.Fprintf(&b, "%s\n\n", out.Title)
+	switch {
+	case out.Energy == nil:
+		fmt.Fprintf(&b, "  no energy: the run was interrupted while still equilibrating\n")
+	case out.Error == nil:
+		fmt.Fprintf(&b, "  energy       %s %s, error unknown\n", quoted(*out.Energy, 0), unit)
+	default:
+		fmt.Fprintf(&b, "  energy       %s %s\n", quoted(*out.Energy, *out.Error), unit)
+		fmt.Fprintf(&b, "               one standard error, statistics only; not in it: time step,\n")
+		fmt.Fprintf(&b, "               population, bias of the phaseless constraint\n")
+	}
+	if out.MeanFieldEnergy != nil {
+		fmt.Fprintf(&b, "  mean field   %s %s (%s)\n", quoted(*out.MeanFieldEnergy, 0), unit, g.reference)
+	}
+	if out.TrialEnergy != nil {
+		fmt.Fprintf(&b, "  trial        %s %s, <S^2> = %.4f\n", quoted(*out.TrialEnergy, 0), unit, *out.TrialSpinSquared)
+	}
+	if out.Energy != nil && out.MeanFieldEnergy != nil && out.Unit == "hartree" {
+		fmt.Fprintf(&b, "  correlation  %s\n", differenceText(*out.Energy-*out.MeanFieldEnergy, out.Error))
+	}
+	fmt.Fprintf(&b, "\n  phaseless AFQMC, %d walkers, time step %g, %.4g of imaginary time sampled", out.Walkers, out.TimeStep, out.ImaginaryTime)
+	if out.AutocorrelationTm != nil {
+		fmt.Fprintf(&b, "\n  (autocorrelation time %.2g)", *out.AutocorrelationTm)
+	}
+	fmt.Fprintf(&b, "\n  %d orbitals, %d up and %d down electrons, %d frozen orbitals, %d factors\n",
+		out.Orbitals, out.Up, out.Down, s.frozen, out.Factors)
+	fmt.Fprintf(&b, "  walkers keep the spin of their %v start, <S^2> = %.4g\n", s.start.Kind, s.start.SpinSquared)
+	fmt.Fprintf(&b, "  seed %d, kernel %s, version %s, %.0f s; status: %s\n", out.Seed, out.Kernel, out.Version, out.WallSeconds, out.Status)
+	if len(out.Warnings) > 0 {
+		fmt.Fprintf(&b, "\n  warnings\n")
+		for _, w := range out.Warnings {
+			fmt.Fprintf(&b, "    %-8s %s: %s\n", w.Level, w.Check, w.Text)
+		}
+		if worst(out.Warnings) == afqmc.Stop {
+			fmt.Fprintf(&b, "  a warning of the level stop: do not quote this number\n")
+		}
+	}
+	fmt.Fprintf(&b, "\n  results in %s\n", filepath.ToSlash(dir))
+	_, err := io.WriteString(w, b.String())
+	return err
+}
+
+// Units of energy differences: CODATA 2018 (Tiesinga et al., Rev. Mod. Phys. 93,
+// 025010 (2021)); the calorie is the thermochemical one, 4.184 J.
+const (
+	hartreeInElectronvolt = 27.211386245988
+	hartreeInKilocalorie  = 627.5094740631 // per mole
+)
+
+// differenceText writes an energy difference in hartree, eV and kcal/mol.
+func differenceText(d float64, err *float64) string {
+	e := 0.0
+	if err != nil {
+		e = *err
+	}
+	return fmt.Sprintf("%s E_h = %s eV = %s kcal/mol", quoted(d, e), quoted(d*hartreeInElectronvolt, e*hartreeInElectronvolt),
+		quoted(d*hartreeInKilocalorie, e*hartreeInKilocalorie))
+}

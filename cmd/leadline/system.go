@@ -1,0 +1,175 @@
+package main
+
+import (
+	"context"
+	"fmt"
+
+	"gonum.org/v1/gonum/mat"
+
+	"leadline/afqmc"
+	"leadline/cmd/leadline/job"
+	"leadline/hamiltonian"
+	"leadline/hamiltonian/basis"
+	"leadline/hamiltonian/fcidump"
+	"leadline/hamiltonian/meanfield"
+	"leadline/hamiltonian/molecule"
+)
+
+// system is what a job solves: the Hamiltonian and its mean field.
+type system struct {
+	hamiltonian *hamiltonian.Hamiltonian
+	// spinFree is the same operator with factors that act alike on both spins,
+	// which restricted mean fields need.
+	spinFree *hamiltonian.Hamiltonian
+	unit     string
+	constant float64 // before freezing
+	frozen   int
+	residual float64 // left by the factorisation on any diagonal integral
+	// start is the spin-pure determinant (RHF or ROHF) that walkers start from.
+	start    *meanfield.Solution
+	guess    [2]*mat.SymDense
+	molecule *molecule.Result
+	warnings []afqmc.Warning
+}
+
+// progressFunc starts a display of one stage; the function that it returns is
+// told how much is done and, with done = total, that the stage has ended.
+type progressFunc func(stage string, total int64) func(done int64)
+
+// newSystem builds the Hamiltonian of a job, freezes its core and solves the
+// spin-pure mean field.
+func newSystem(ctx context.Context, j *job.Job, in *inputs, progress progressFunc) (*system, error) {
+	s := &system{unit: "hartree"}
+	var err error
+	switch j.Hamiltonian.Source {
+	case "integrals":
+		err = s.fromIntegrals(ctx, j, in, progress)
+	case "molecule":
+		err = s.fromMolecule(ctx, j, in, progress)
+	default:
+		err = fmt.Errorf("hamiltonian source %q is not available in this version", j.Hamiltonian.Source)
+	}
+	if err != nil {
+		return nil, err
+	}
+	if s.spinFree == nil {
+		s.spinFree = s.hamiltonian
+	}
+	s.constant = s.hamiltonian.Constant
+	options := meanfield.Options{Guess: s.guess}
+	if s.frozen > 0 {
+		s.hamiltonian, _, err = meanfield.FrozenCore(ctx, s.hamiltonian, s.frozen, options)
+		if err != nil {
+			return nil, fmt.Errorf("frozen core: %w", err)
+		}
+		s.spinFree = s.hamiltonian
+		options = meanfield.Options{}
+	}
+	kind := meanfield.RHF
+	if s.hamiltonian.Up != s.hamiltonian.Down {
+		kind = meanfield.ROHF
+	}
+	if s.start, err = meanfield.Solve(ctx, s.spinFree, kind, options); err != nil {
+		return nil, fmt.Errorf("%v: %w", kind, err)
+	}
+	return s, nil
+}
+
+func (s *system) fromIntegrals(ctx context.Context, j *job.Job, in *inputs, progress progressFunc) error {
+	name := j.Hamiltonian.File
+	file, size, err := in.open(name)
+	if err != nil {
+		return err
+	}
+	defer file.Close()
+	tell := progress("reading "+name, size)
+	integrals, err := fcidump.ReadWithin(ctx, file, in.path(name), readingMemory(), tell)
+	if err != nil {
+		return err
+	}
+	tell(size)
+	s.hamiltonian, s.residual, err = integrals.Hamiltonian(ctx, j.Hamiltonian.FactorTolerance)
+	if err != nil {
+		return fmt.Errorf("%s: %w", in.path(name), err)
+	}
+	if j.Hamiltonian.FrozenCore == job.AutoCore {
+		return fmt.Errorf("hamiltonian.frozen_core: \"auto\" needs the atoms of a molecule; give a number of orbitals")
+	}
+	s.frozen = int(j.Hamiltonian.FrozenCore)
+	return nil
+}
+
+func (s *system) fromMolecule(ctx context.Context, j *job.Job, in *inputs, progress progressFunc) error {
+	geometry, err := readGeometry(j, in)
+	if err != nil {
+		return err
+	}
+	set, err := readBasis(j, in)
+	if err != nil {
+		return err
+	}
+	var tell func(int64)
+	s.molecule, err = molecule.Build(ctx, geometry, set, molecule.Options{
+		Charge:    j.Hamiltonian.Charge,
+		Unpaired:  j.Hamiltonian.Unpaired,
+		Cartesian: j.Hamiltonian.Cartesian,
+		Tolerance: j.Hamiltonian.FactorTolerance,
+		Progress: func(done, total int64) {
+			if tell == nil {
+				tell = progress("integrals", total)
+			}
+			tell(done)
+		},
+	})
+	if err != nil {
+		return err
+	}
+	s.hamiltonian, s.residual, s.guess = s.molecule.Hamiltonian, s.molecule.Residual, s.molecule.Density
+	for _, w := range s.molecule.Warnings {
+		s.warnings = append(s.warnings, afqmc.Warning{Check: w.Check, Level: afqmc.Caution, Text: w.Text, Figure: w.Figure})
+	}
+	s.frozen = int(j.Hamiltonian.FrozenCore)
+	if j.Hamiltonian.FrozenCore == job.AutoCore {
+		s.frozen = geometry.CoreOrbitals()
+	}
+	return nil
+}
+
+func readGeometry(j *job.Job, in *inputs) (molecule.Geometry, error) {
+	if j.Hamiltonian.XYZ != "" {
+		file, _, err := in.open(j.Hamiltonian.XYZ)
+		if err != nil {
+			return nil, err
+		}
+		defer file.Close()
+		return molecule.ReadXYZ(file, in.path(j.Hamiltonian.XYZ))
+	}
+	unit := molecule.Bohr
+	if j.Hamiltonian.Unit == "angstrom" {
+		unit = molecule.Angstrom
+	}
+	var g molecule.Geometry
+	for i, a := range j.Hamiltonian.Atoms {
+		atom, err := molecule.NewAtom(a.Symbol, a.X, unit)
+		if err != nil {
+			return nil, fmt.Errorf("hamiltonian.atoms: atom %d: %w", i+1, err)
+		}
+		g = append(g, atom)
+	}
+	return g, nil
+}
+
+func readBasis(j *job.Job, in *inputs) (*basis.Set, error) {
+	if j.Hamiltonian.BasisFile == "" {
+		return basis.Named(j.Hamiltonian.Basis)
+	}
+	file, _, err := in.open(j.Hamiltonian.BasisFile)
+	if err != nil {
+		return nil, err
+	}
+	defer file.Close()
+	return basis.Read(file, in.path(j.Hamiltonian.BasisFile))
+}
+
+// noProgress shows nothing.
+func noProgress(string, int64) func(int64) { return func(int64) {} }
