@@ -63,9 +63,11 @@ type Result struct {
 	// the separate atoms, with the right number of electrons.
 	Density [2]*mat.SymDense
 	// Residual is the largest error that the factorisation left on any diagonal
-	// integral over basis functions, hartree. OrbitalResidual bounds the error of
-	// every integral over the orthonormal orbitals; it is usually far too large.
-	Residual, OrbitalResidual float64
+	// integral over basis functions, hartree; see [integral.Cholesky]. Integrals
+	// over orthonormal orbitals mix functions with large coefficients of both signs
+	// where the basis is nearly dependent, and may be off by more; energies are
+	// usually off by less than a few times Residual.
+	Residual float64
 	// Quartets is the number of quartets of shell pairs evaluated.
 	Quartets int64
 	Warnings []Warning
@@ -131,7 +133,6 @@ func Build(ctx context.Context, g Geometry, set *basis.Set, o Options) (*Result,
 		return nil, err
 	}
 	r.Residual, r.Quartets = cholesky.Residual, cholesky.Quartets
-	r.OrbitalResidual = r.bound(cholesky)
 	factors := r.factors(cholesky)
 	r.Hamiltonian = &hamiltonian.Hamiltonian{
 		Sector:   sector,
@@ -202,18 +203,4 @@ func (r *Result) factors(c *integral.Cholesky) *hamiltonian.Factors {
 		at += count
 	}
 	return out
-}
-
-// bound returns max_pq (Σ_μν |X_μp| √D_μν |X_νq|)², with D what is left on the
-// diagonal: a bound of the error of any (pq|rs).
-func (r *Result) bound(c *integral.Cholesky) float64 {
-	n, _ := r.Orbitals.Dims()
-	roots := mat.NewDense(n, n, nil)
-	c.ResidualRoots(roots.RawMatrix().Data)
-	var x, half, full mat.Dense
-	x.Apply(func(_, _ int, v float64) float64 { return max(v, -v) }, r.Orbitals)
-	half.Mul(roots, &x)
-	full.Mul(x.T(), &half)
-	top := mat.Max(&full)
-	return top * top
 }

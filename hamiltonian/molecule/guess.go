@@ -5,9 +5,11 @@ import (
 	"fmt"
 	"math"
 
+	"gonum.org/v1/gonum/floats"
 	"gonum.org/v1/gonum/mat"
 
 	"leadline/hamiltonian/basis"
+	"leadline/hamiltonian/linalg"
 	"leadline/hamiltonian/molecule/integral"
 )
 
@@ -138,39 +140,40 @@ func (a *atom) average(full *mat.SymDense, l int) *mat.SymDense {
 	return out
 }
 
-// solve iterates with half of the new density mixed in; the occupations are fixed
-// for every angular momentum, so that this converges.
+// solve iterates with half of the old Fock matrix mixed in; the occupations are
+// fixed for every angular momentum, so that this converges.
 func (a *atom) solve() (*mat.SymDense, error) {
 	const iterations, enough = 40, 1e-4
-	density := mat.NewSymDense(a.n, nil)
-	fock := a.core
+	fock, density := a.core, mat.NewSymDense(a.n, nil)
 	for i := range iterations {
-		next, err := a.fill(fock)
+		orbitals, err := a.fill(fock)
 		if err != nil {
 			return nil, err
 		}
+		next := mat.NewSymDense(a.n, nil)
+		next.SymOuterK(1, orbitals)
 		change := 0.0
-		for p := range a.n {
-			for q := range p + 1 {
-				old, v := density.At(p, q), next.At(p, q)
-				change = max(change, math.Abs(v-old))
-				if i > 0 {
-					v = 0.5 * (v + old)
-				}
-				density.SetSym(p, q, v)
-			}
+		for k, v := range next.RawSymmetric().Data {
+			change = max(change, math.Abs(v-density.RawSymmetric().Data[k]))
 		}
+		density = next
 		if change < enough {
 			break
 		}
-		fock = a.fock(density)
+		mixed := a.fock(orbitals)
+		if i > 0 {
+			mixed.AddSym(mixed, fock)
+			mixed.ScaleSym(0.5, mixed)
+		}
+		fock = mixed
 	}
 	return density, nil
 }
 
-// fill returns the density of the lowest orbitals of a Fock matrix.
-func (a *atom) fill(fock *mat.SymDense) (*mat.SymDense, error) {
-	density := mat.NewSymDense(a.n, nil)
+// fill returns the lowest orbitals of a Fock matrix as columns, multiplied by the
+// roots of their occupations.
+func (a *atom) fill(fock *mat.SymDense) (*mat.Dense, error) {
+	var columns []float64 // orbitals × functions
 	for l, occupation := range a.occupations {
 		if len(occupation) == 0 {
 			continue
@@ -184,44 +187,37 @@ func (a *atom) fill(fock *mat.SymDense) (*mat.SymDense, error) {
 		var u, c mat.Dense
 		eigen.VectorsTo(&u)
 		c.Mul(x, &u)
-		for k, n := range occupation {
-			if _, orbitals := c.Dims(); k >= orbitals {
-				break
-			}
-			for i, p := range a.places[l] {
-				for j, q := range a.places[l][:i+1] {
-					for m := range 2*l + 1 {
-						density.SetSym(p+m, q+m, density.At(p+m, q+m)+n*c.At(i, k)*c.At(j, k))
-					}
+		_, available := c.Dims()
+		for k, n := range occupation[:min(len(occupation), available)] {
+			for m := range 2*l + 1 {
+				column := make([]float64, a.n)
+				for i, p := range a.places[l] {
+					column[p+m] = math.Sqrt(n) * c.At(i, k)
 				}
+				columns = append(columns, column...)
 			}
 		}
 	}
-	return density, nil
+	return mat.DenseCopyOf(mat.NewDense(len(columns)/a.n, a.n, columns).T()), nil
 }
 
-// fock returns h + Σ_g [tr(L D)·L − ½·L D L].
-func (a *atom) fock(density *mat.SymDense) *mat.SymDense {
-	sum := mat.NewDense(a.n, a.n, nil)
-	sum.Copy(a.core)
-	full := mat.NewDense(a.n, a.n, nil)
-	var half, exchange mat.Dense
+// fock returns h + Σ_g [tr(L D)·L − ½·L D L] for the density W Wᵀ of the orbitals.
+func (a *atom) fock(orbitals *mat.Dense) *mat.SymDense {
+	n, w := a.n, orbitals.RawMatrix()
+	l, half, sum := make([]float64, n*n), make([]float64, n*w.Cols), make([]float64, n*n)
 	for b := range a.factors.Blocks() {
 		count, unpack := a.factors.Unpack(b)
 		for i := range count {
-			unpack(full.RawMatrix().Data, i)
-			half.Mul(full, density)
-			exchange.Mul(&half, full)
-			exchange.Scale(-0.5, &exchange)
-			sum.Add(sum, &exchange)
-			full.Scale(mat.Trace(&half), full)
-			sum.Add(sum, full)
+			unpack(l, i)
+			linalg.Gemm(false, false, n, w.Cols, n, 1, l, n, w.Data, w.Stride, 0, half, w.Cols)
+			linalg.Gemm(false, true, n, n, w.Cols, -0.5, half, w.Cols, half, w.Cols, 1, sum, n)
+			floats.AddScaled(sum, floats.Dot(half, w.Data), l)
 		}
 	}
-	out := mat.NewSymDense(a.n, nil)
-	for p := range a.n {
+	out := mat.NewSymDense(n, nil)
+	for p := range n {
 		for q := range p + 1 {
-			out.SetSym(p, q, 0.5*(sum.At(p, q)+sum.At(q, p)))
+			out.SetSym(p, q, a.core.At(p, q)+0.5*(sum[p*n+q]+sum[q*n+p]))
 		}
 	}
 	return out

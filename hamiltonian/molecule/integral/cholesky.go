@@ -41,7 +41,6 @@ type Cholesky struct {
 	functions int
 	rows      [][2]int32
 	blocks    [][]float64 // vectors × rows
-	residual  []float64   // of each row
 }
 
 // Count returns the number of factors.
@@ -74,18 +73,6 @@ func (c *Cholesky) Unpack(block int) (count int, unpack func(dst []float64, i in
 
 // Release frees the storage of a block that is no longer needed.
 func (c *Cholesky) Release(block int) { c.blocks[block] = nil }
-
-// ResidualRoots writes the square roots of the errors left on the diagonal
-// integrals (pq|pq) into dst, functions × functions. By the inequality of Schwarz
-// |error of (pq|rs)| ≤ dst_pq·dst_rs.
-func (c *Cholesky) ResidualRoots(dst []float64) {
-	clear(dst)
-	for r, v := range c.residual {
-		p, q := int(c.rows[r][0]), int(c.rows[r][1])
-		dst[p*c.functions+q] = math.Sqrt(v)
-		dst[q*c.functions+p] = dst[p*c.functions+q]
-	}
-}
 
 // Factorise returns Cholesky factors with full pivoting in rounds, straight from
 // shells: only the columns of chosen pivots are ever computed (Beebe and
@@ -123,7 +110,6 @@ func (f *Functions) Factorise(ctx context.Context, tolerance float64, progress f
 		}
 	}
 	s.chol.Residual = s.largest()
-	s.chol.residual = s.d
 	return s.chol, nil
 }
 
