@@ -217,6 +217,7 @@ func (s *search) try(c [2]*mat.Dense) error {
 		if mode < -unstable {
 			if lower := s.downhill(pt, direction); lower != nil {
 				pt = lower
+				iterations++
 				continue
 			}
 		}

@@ -102,6 +102,31 @@ func TestOrbitalFileForms(t *testing.T) {
 	}
 }
 
+// Complex columns that are orthonormal to 5e-7 only come out orthonormal and span
+// what they spanned.
+func TestOrthonormalise(t *testing.T) {
+	s := complex(math.Sqrt(0.5), 0)
+	before := []complex128{
+		s, s * 1i,
+		s * 1i, s,
+		0, 5e-7 * (1 + 1i),
+	}
+	before[1] += 3e-7i * before[0]
+	before[3] += 3e-7i * before[2]
+	c := append([]complex128(nil), before...)
+	if d := orthonormalise(c, 3, 2); d < 2e-7 || d > 1e-6 {
+		t.Errorf("deviation %.1e", d)
+	}
+	if d := orthonormalise(append([]complex128(nil), c...), 3, 2); d > 1e-15 {
+		t.Errorf("deviation %.1e afterwards", d)
+	}
+	for i := range c {
+		if d := cmplx.Abs(c[i] - before[i]); d > 1e-6 {
+			t.Errorf("number %d moved by %.1e", i, d)
+		}
+	}
+}
+
 func TestOrbitalFileErrors(t *testing.T) {
 	for _, c := range []struct{ text, want string }{
 		{"", "a:1: file ends, expected a line"},

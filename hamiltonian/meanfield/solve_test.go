@@ -202,6 +202,8 @@ func TestNaturalOrbitals(t *testing.T) {
 	if math.Abs(s2-uhf.SpinSquared) > 1e-9 {
 		t.Errorf("<S^2> from occupations %.9f, expected %.9f", s2, uhf.SpinSquared)
 	}
+	// In a basis that says nothing of the solution.
+	h = h.Rotate(orthonormal(h.Orbitals, h.Orbitals, rand.New(rand.NewPCG(1, 9))))
 	rhf, err := Solve(t.Context(), h, RHF, Options{})
 	if err != nil {
 		t.Fatal(err)
