@@ -210,6 +210,7 @@ func forms(s *Source, h *hamiltonian.Hamiltonian) map[string]trial.Energies {
 	return map[string]trial.Energies{
 		"all memory": s.Energies(h, r, 1<<40),
 		"no memory":  s.Energies(h, r, 0),
+		"table":      s.newCumulant(h, r, 1<<40),
 	}
 }
 

@@ -11,6 +11,14 @@ import (
 // is computed once; else the exchange table is made where it fits in what is
 // left, and replaced by products factor by factor where not.
 func (s *Source) Energies(h *hamiltonian.Hamiltonian, r *trial.Rotated, memory int64) trial.Energies {
+	if image := s.newImage(h, memory); image != nil {
+		return image
+	}
+	return s.newCumulant(h, r, memory)
+}
+
+// newCumulant prepares the general form.
+func (s *Source) newCumulant(h *hamiltonian.Hamiltonian, r *trial.Rotated, memory int64) *energies {
 	e := &energies{
 		s:       s,
 		h:       h,

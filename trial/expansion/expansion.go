@@ -271,3 +271,37 @@ func (e *Expansion) AddNoise(relative float64, seed uint64) (*Expansion, error) 
 	}
 	return e.with(list), nil
 }
+
+// ExchangeSymmetric returns the expansion with the mean of the amplitudes of
+// determinants that differ by exchanging up and down, as states of even total
+// spin have them equal; sources work less for it. ok is false where the numbers
+// of electrons differ or any two amplitudes differ by more than tolerance times
+// the largest one: a solver's residual is a good tolerance.
+func (e *Expansion) ExchangeSymmetric(tolerance float64) (symmetric *Expansion, ok bool) {
+	if e.Up != e.Down {
+		return nil, false
+	}
+	index := make(map[[2]uint64]int, len(e.Determinants))
+	for k, d := range e.Determinants {
+		index[[2]uint64{d.Up, d.Down}] = k
+	}
+	list := slices.Clone(e.Determinants)
+	limit := tolerance * e.largest()
+	for k, d := range e.Determinants {
+		var other Determinant
+		l, found := index[[2]uint64{d.Down, d.Up}]
+		if found {
+			other = e.Determinants[l]
+		}
+		difference := d.Amplitude - other.Amplitude
+		if math.Hypot(real(difference), imag(difference)) > limit {
+			return nil, false
+		}
+		mean := (d.Amplitude + other.Amplitude) / 2
+		list[k].Amplitude = mean
+		if !found {
+			list = append(list, Determinant{Up: d.Down, Down: d.Up, Amplitude: mean, Error: d.Error})
+		}
+	}
+	return e.with(list), true
+}

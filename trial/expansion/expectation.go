@@ -75,7 +75,7 @@ func (s *Source) OneBodyDensity() [2]*mat.SymDense {
 }
 
 // Energy implements [trial.Expectations]: in the window with the core folded in,
-// or, where that has too many determinants, by [Source.byDeterminants]. h must be
+// or, where that has too many determinants, determinant by determinant. h must be
 // a valid Hamiltonian of the source's sector.
 func (s *Source) Energy(h *hamiltonian.Hamiltonian) float64 {
 	if h.Sector != s.sector {
@@ -95,6 +95,10 @@ func (s *Source) Energy(h *hamiltonian.Hamiltonian) float64 {
 		}
 		return operator.Energy(re, im)
 	}
+	return s.energyByDeterminants(h)
+}
+
+func (s *Source) energyByDeterminants(h *hamiltonian.Hamiltonian) float64 {
 	guide, err := trial.NewGuide(h, s, 1<<30)
 	if err != nil {
 		panic("expansion: hamiltonian of another sector")
@@ -199,6 +203,10 @@ func (s *Source) SpinSquared() float64 {
 	if space, re, im, ok := s.whole(); ok {
 		return space.SpinSquared(re, im)
 	}
+	return s.spinByDeterminants()
+}
+
+func (s *Source) spinByDeterminants() float64 {
 	e := s.expansion
 	norm := e.Norm()
 	index := make(map[[2]uint64]int, len(e.Determinants))

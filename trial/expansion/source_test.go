@@ -1,0 +1,250 @@
+package expansion
+
+import (
+	"math"
+	"math/bits"
+	"math/cmplx"
+	"math/rand/v2"
+	"sync"
+	"testing"
+
+	"leadline/trial"
+	"leadline/trial/trialtest"
+)
+
+// Minors, gradient and second derivatives against determinants of submatrices
+// and finite differences, which are exact for polynomials of degree one in each
+// element.
+func TestMinors(t *testing.T) {
+	rng := rand.New(rand.NewPCG(1, 2))
+	gauss := func() complex128 { return complex(rng.NormFloat64(), rng.NormFloat64()) }
+	for _, c := range []struct{ active, electrons int }{{1, 0}, {1, 1}, {3, 1}, {4, 2}, {6, 3}, {7, 3}, {7, 5}} {
+		s := newSpace(c.active, c.electrons, allStrings(c.active, c.electrons))
+		nh, np := c.electrons, c.active-c.electrons
+		theta := make([]complex128, s.excitations())
+		g := make([]complex128, s.minors())
+		for k := range theta {
+			theta[k] = gauss()
+		}
+		for k := range g {
+			g[k] = gauss()
+		}
+		levels := min(nh, np)
+		minors := func() []complex128 {
+			m := make([]complex128, s.minors())
+			s.computeMinors(m, theta, levels)
+			return m
+		}
+		m := minors()
+		for k := range levels + 1 {
+			for p, rows := range s.particles.levels[k].table.Masks() {
+				for h, columns := range s.holes.levels[k].table.Masks() {
+					want := submatrix(theta, nh, rows, columns)
+					if got := m[s.offset[k]+p*s.holes.count(k)+h]; cmplx.Abs(got-want) > 1e-12*(1+cmplx.Abs(want)) {
+						t.Fatalf("%v: minor of size %d is %v, expected %v", c, k, got, want)
+					}
+				}
+			}
+		}
+		value := func() complex128 {
+			var sum complex128
+			for k, v := range minors() {
+				sum += g[k] * v
+			}
+			return sum
+		}
+		derivative := func(k int, f func() complex128) complex128 {
+			old := theta[k]
+			theta[k] = old + 1
+			up := f()
+			theta[k] = old
+			return up - f()
+		}
+		w := make([]complex128, s.excitations())
+		s.gradient(w, append([]complex128(nil), g...), m, theta, levels)
+		for k := range w {
+			if want := derivative(k, value); cmplx.Abs(w[k]-want) > 1e-11*(1+cmplx.Abs(want)) {
+				t.Fatalf("%v: derivative %d is %v, expected %v", c, k, w[k], want)
+			}
+		}
+		second := make([]complex128, s.pairPart.count*s.pairHole.count)
+		s.secondDerivatives(second, g, m, levels, make([]complex128, 2*s.widest()))
+		for b := range np {
+			for a := range b {
+				for j := range nh {
+					for i := range j {
+						want := derivative(a*nh+i, func() complex128 { return derivative(b*nh+j, value) })
+						if got := second[pairNumber(a, b)*s.pairHole.count+pairNumber(i, j)]; cmplx.Abs(got-want) > 1e-11*(1+cmplx.Abs(want)) {
+							t.Fatalf("%v: second derivative %d%d %d%d is %v, expected %v", c, a, i, b, j, got, want)
+						}
+					}
+				}
+			}
+		}
+	}
+}
+
+// submatrix returns det θ[rows, columns] by expansion along the first row.
+func submatrix(theta []complex128, width int, rows, columns uint64) complex128 {
+	if rows == 0 {
+		return 1
+	}
+	r := bits.TrailingZeros64(rows)
+	var sum complex128
+	sign := complex128(1)
+	for rest := columns; rest != 0; rest &= rest - 1 {
+		c := bits.TrailingZeros64(rest)
+		sum += sign * theta[r*width+c] * submatrix(theta, width, rows&(rows-1), columns^1<<c)
+		sign = -sign
+	}
+	return sum
+}
+
+// Walkers that no determinant of the expansion sees have overlap and density
+// zero and a finite energy; ones with a NaN have no finite overlap; neither
+// harms its neighbours.
+func TestDeadWalkers(t *testing.T) {
+	for _, k := range []int{0, 1, 4, 6, 12, 24} {
+		c := windows[k]
+		e := c.expansion(t, 7)
+		s, err := New(e)
+		if err != nil {
+			t.Fatal(err)
+		}
+		h := c.hamiltonian()
+		guide, err := trial.NewGuide(h, s, 1<<30)
+		if err != nil {
+			t.Fatal(err)
+		}
+		w := trialtest.RandomWalkers(s.Sector(), false, 3, 2)
+		want := guide.NewMixed(3)
+		guide.Evaluate(want, w)
+		guide.LocalEnergies(want, w)
+		for j := range w.Orbitals {
+			for spin := range 2 {
+				w.Set(0, spin, j, 0, 0)
+			}
+		}
+		w.Set(1, 0, e.Core, 0, complex(math.NaN(), 0))
+		got := guide.NewMixed(3)
+		guide.Evaluate(got, w)
+		guide.LocalEnergies(got, w)
+		if !got.Overlap[0].Zero() || cmplx.IsNaN(got.Energy[0]) {
+			t.Errorf("%s: dead walker has overlap %v, energy %v", c.name, got.Overlap[0], got.Energy[0])
+		}
+		length := len(got.Density) / 6
+		for _, v := range got.Density[:2*length] {
+			if v != 0 {
+				t.Fatalf("%s: dead walker has a density", c.name)
+			}
+		}
+		if !math.IsNaN(got.Overlap[1].Log) {
+			t.Errorf("%s: walker with NaN has overlap %v", c.name, got.Overlap[1])
+		}
+		if got.Overlap[2] != want.Overlap[2] || got.Energy[2] != want.Energy[2] {
+			t.Errorf("%s: a neighbour changed from %v, %v to %v, %v", c.name, want.Overlap[2], want.Energy[2], got.Overlap[2], got.Energy[2])
+		}
+	}
+}
+
+// The scale of amplitudes and walkers only shifts ln O.
+func TestScale(t *testing.T) {
+	c := windows[1]
+	e := c.expansion(t, 7)
+	big := e.with(append([]Determinant(nil), e.Determinants...))
+	for k := range big.Determinants {
+		big.Determinants[k].Amplitude *= 1e90
+	}
+	w := trialtest.RandomWalkers(e.Sector(), false, 2, 2)
+	scaled := trialtest.RandomWalkers(e.Sector(), false, 2, 2)
+	for k := range scaled.Data {
+		scaled.Data[k] *= 1e60
+	}
+	evaluate := func(e *Expansion, w trial.Walkers) *trial.Mixed {
+		s, err := New(e)
+		if err != nil {
+			t.Fatal(err)
+		}
+		guide, err := trial.NewGuide(c.hamiltonian(), s, 1<<30)
+		if err != nil {
+			t.Fatal(err)
+		}
+		m := guide.NewMixed(w.Count)
+		guide.Evaluate(m, w)
+		guide.LocalEnergies(m, w)
+		return m
+	}
+	a, b := evaluate(e, w), evaluate(big, scaled)
+	shift := math.Log(10) * (90 + 60*float64(w.Up+w.Down))
+	for i := range w.Count {
+		if d := b.Overlap[i].Log - a.Overlap[i].Log - shift; math.Abs(d) > 1e-11 {
+			t.Errorf("ln O off by %g", d)
+		}
+		if d := cmplx.Abs(a.Energy[i] - b.Energy[i]); d > 1e-11*(1+cmplx.Abs(a.Energy[i])) {
+			t.Errorf("energy off by %g", d)
+		}
+	}
+}
+
+// Several goroutines at once, with more walkers than a tile, give what one gives,
+// to the last bit.
+func TestConcurrent(t *testing.T) {
+	for _, k := range []int{1, 5, 24} {
+		c := windows[k]
+		s, err := New(c.expansion(t, 7))
+		if err != nil {
+			t.Fatal(err)
+		}
+		guide, err := trial.NewGuide(c.hamiltonian(), s, 1<<30)
+		if err != nil {
+			t.Fatal(err)
+		}
+		w := trialtest.RandomWalkers(s.Sector(), false, 2*s.tile+3, 2)
+		results := make([]*trial.Mixed, 4)
+		var wait sync.WaitGroup
+		for g := range results {
+			results[g] = guide.NewMixed(w.Count)
+			wait.Go(func() {
+				for range 3 {
+					guide.Evaluate(results[g], w)
+					guide.LocalEnergies(results[g], w)
+				}
+			})
+		}
+		wait.Wait()
+		for _, m := range results[1:] {
+			for i := range w.Count {
+				if m.Overlap[i] != results[0].Overlap[i] || m.Energy[i] != results[0].Energy[i] {
+					t.Fatalf("%s: walker %d differs between goroutines", c.name, i)
+				}
+			}
+		}
+	}
+}
+
+// A list with more references than frames are kept still gives the same.
+func TestFewFrames(t *testing.T) {
+	c := windows[24]
+	e := c.expansion(t, 7)
+	w := trialtest.RandomWalkers(e.Sector(), false, 40, 3)
+	var overlaps [2][]trial.Overlap
+	for k := range overlaps {
+		s, err := New(e)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if k == 1 {
+			s.spaces[0].framesLeft = 1
+			s.spaces[1].framesLeft = 1
+		}
+		overlaps[k] = make([]trial.Overlap, w.Count)
+		for range 2 {
+			s.Overlaps(overlaps[k], w)
+		}
+	}
+	for i := range w.Count {
+		if overlaps[0][i] != overlaps[1][i] {
+			t.Errorf("walker %d: %v with all frames, %v with one", i, overlaps[0][i], overlaps[1][i])
+		}
+	}
+}
