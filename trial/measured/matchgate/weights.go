@@ -59,6 +59,19 @@ func (m *Matching) Weights(dst, g []float64, p uint64, scratch []float64) (table
 	return append(dst, from[:entries]...), scratch
 }
 
+// Polynomial fills dst, n+1 numbers, with the coefficients of
+// 2^n <0|G_z|0> = Π_c (1 + p_c z^{m_c}).
+func (m *Matching) Polynomial(dst []float64, p uint64) {
+	clear(dst)
+	dst[0] = 1
+	for c, size := range m.Cycles {
+		sign := 1 - 2*float64(p>>c&1)
+		for k := m.N; k >= size; k-- {
+			dst[k] += sign * dst[k-size]
+		}
+	}
+}
+
 // Entries returns the length of the table of weights.
 func (m *Matching) Entries() int {
 	entries := 1

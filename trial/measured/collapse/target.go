@@ -1,0 +1,102 @@
+package collapse
+
+import (
+	"fmt"
+	"math"
+	"math/bits"
+
+	"leadline/trial/measured/record"
+)
+
+// target is the set of determinants to estimate: every row mask joined with
+// every column mask. For a sector the rows are the α strings and the columns the
+// β strings, as masks of modes in the record's own order.
+type target struct {
+	rows, cols []uint64
+	// rowModes are the modes that rows may occupy; columns have the others.
+	rowModes uint64
+	// alpha are the α modes of a record in interleaved order, whose amplitudes
+	// take a sign on the way to blocked order; 0 if there is none to take.
+	alpha uint64
+}
+
+// Dimension returns the number of determinants in the sector of a header,
+// Inf-safe for registers of any size.
+func Dimension(h *record.Header) float64 {
+	m := h.Modes() / 2
+	return binomial(m, h.Up) * binomial(m, h.Down)
+}
+
+func binomial(n, k int) float64 {
+	b := 1.0
+	for i := range min(k, n-k) {
+		b = math.Round(b * float64(n-i) / float64(i+1))
+	}
+	return b
+}
+
+// Strings returns the masks of electrons among orbitals, ascending.
+func Strings(orbitals, electrons int) []uint64 {
+	list := make([]uint64, 0, int(binomial(orbitals, electrons)))
+	if electrons == 0 {
+		return append(list, 0)
+	}
+	limit := uint64(1) << orbitals
+	for s := uint64(1)<<electrons - 1; s < limit; {
+		list = append(list, s)
+		// The next word with as many bits: carry the lowest run upwards.
+		low := s & -s
+		ripple := s + low
+		s = ripple | (s^ripple)>>2/low
+	}
+	return list
+}
+
+// sectorTarget lists the determinants of (N_up, N_down).
+func sectorTarget(h *record.Header, up, down []uint64) target {
+	t := target{rowModes: h.AncillaMask()}
+	m := h.Modes() / 2
+	place := func(s uint64, spin int) (mask uint64) {
+		for ; s != 0; s &= s - 1 {
+			mask |= 1 << h.Mode(bits.TrailingZeros64(s), spin)
+		}
+		return mask
+	}
+	alpha := place(1<<m-1, 0)
+	t.rowModes |= alpha
+	if h.Order == record.Interleaved {
+		t.alpha = alpha
+	}
+	for _, s := range up {
+		t.rows = append(t.rows, place(s, 0)|h.AncillaMask())
+	}
+	for _, s := range down {
+		t.cols = append(t.cols, place(s, 1))
+	}
+	return t
+}
+
+// maskTarget lists determinants one by one.
+func maskTarget(h *record.Header, masks []uint64) (target, error) {
+	t := target{rowModes: ^uint64(0), cols: []uint64{0}}
+	for _, d := range masks {
+		if h.Qubits < 64 && d>>h.Qubits != 0 {
+			return t, fmt.Errorf("determinant %#x has modes beyond the record's %d qubits", d, h.Qubits)
+		}
+		t.rows = append(t.rows, d)
+	}
+	return t, nil
+}
+
+func (t *target) size() int { return len(t.rows) * len(t.cols) }
+
+// orderSign reports whether an amplitude changes sign from interleaved to
+// blocked order: (−1)^{Σ_{q∈D_α} #{p∈D_β : p<q}}. In interleaved order β mode
+// 2p+1 lies below α mode 2q just if p < q.
+func (t *target) orderSign(row, col uint64) bool {
+	n := 0
+	for a := row & t.alpha; a != 0; a &= a - 1 {
+		n += bits.OnesCount64(col & (a&-a - 1))
+	}
+	return n&1 != 0
+}

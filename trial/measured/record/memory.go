@@ -1,0 +1,57 @@
+package record
+
+import "io"
+
+// Stream is a record that is being read: a Reader, or a Memory. Next fills in
+// one setting, or returns io.EOF after the last; see Reader.
+type Stream interface {
+	Header() *Header
+	// Declared returns the numbers of settings and shots, −1 if unknown.
+	Declared() (settings, shots int64)
+	Next(*Setting) error
+	// Digest identifies the content once Next has returned io.EOF; "" if the
+	// stream has no file behind it.
+	Digest() string
+}
+
+// Source opens a record from its beginning. Some estimates read it more than
+// once.
+type Source func() (Stream, error)
+
+// Memory is a record held in memory, such as a simulated one.
+type Memory struct {
+	header   Header
+	settings []*Setting
+	next     int
+}
+
+// NewMemory returns a source of the given record. Header and settings are
+// shared with the caller and must not change while it is read; they must be
+// valid as a Writer would demand.
+func NewMemory(h *Header, settings []*Setting) Source {
+	return func() (Stream, error) { return &Memory{header: *h, settings: settings}, nil }
+}
+
+// Header implements Stream.
+func (m *Memory) Header() *Header { return &m.header }
+
+// Declared implements Stream.
+func (m *Memory) Declared() (settings, shots int64) {
+	for _, s := range m.settings {
+		shots += s.Count()
+	}
+	return int64(len(m.settings)), shots
+}
+
+// Next implements Stream.
+func (m *Memory) Next(s *Setting) error {
+	if m.next == len(m.settings) {
+		return io.EOF
+	}
+	s.CopyFrom(m.settings[m.next])
+	m.next++
+	return nil
+}
+
+// Digest implements Stream.
+func (m *Memory) Digest() string { return "" }
