@@ -1,13 +1,6 @@
 package afqmc
 
-import (
-	"math"
-	"math/rand/v2"
-)
-
-// controlStream keys the random numbers of population control; walkers use the
-// streams from 1 on.
-const controlStream = 0
+import "math"
 
 // Control resamples the walkers in proportion to their weights by a comb with
 // one uniform offset (systematic resampling: the unbiased choice of smallest
@@ -24,9 +17,8 @@ func (w *Walk) Control() error {
 	s.Interval.Controls++
 	s.LogGrowth += math.Log(sum / float64(n))
 
-	var source rand.PCG
-	seedStream(&source, w.Options.Seed, uint64(s.Step), controlStream)
-	offset := rand.New(&source).Float64()
+	w.stream.key(w.Options.Seed, uint64(s.Step), controlStream)
+	offset := w.stream.rand.Float64()
 	spacing := sum / float64(n)
 	copies := w.copies
 	clear(copies)

@@ -192,29 +192,46 @@ func (p *Propagator) draw(a *area, i int, re, im []float64) (c, importance compl
 // the coefficients in the area. Flops for each walker, N columns in all:
 // 2·ng·M(M+1) for the fields, 8·M²N for both half steps, 8·M²N·Order for the series.
 func (p *Propagator) advance(a *area, data []float64, count, up, down int) {
-	m := p.orbitals
-	columns := up + down
-	if p.spins == 1 {
-		p.half[0].Mul(count*2*columns, 1, data, m, 0, a.columns, m)
-		p.fields(a, count, 0)
-		for i := range count {
-			p.unpack(a, i)
-			p.series(a, a.columns[i*2*columns*m:(i+1)*2*columns*m])
-		}
-		p.half[0].Mul(count*2*columns, 1, a.columns, m, 0, data, m)
-		return
-	}
-	for spin, n := range [2]int{up, down} {
+	m, columns := p.orbitals, up+down
+	p.applyHalf(a.columns, data, count, up, down)
+	for spin := range p.spins {
+		first, n := p.moved(spin, up, down)
 		if n == 0 {
 			continue
 		}
 		p.fields(a, count, spin)
 		for i := range count {
-			own := data[(i*columns+spin*up)*2*m:][:n*2*m]
-			p.half[spin].Mul(2*n, 1, own, m, 0, a.columns, m)
 			p.unpack(a, i)
-			p.series(a, a.columns[:n*2*m])
-			p.half[spin].Mul(2*n, 1, a.columns, m, 0, own, m)
+			p.series(a, a.columns[(i*columns+first)*2*m:][:n*2*m])
+		}
+	}
+	p.applyHalf(data, a.columns, count, up, down)
+}
+
+// moved returns the columns that the operands of one spin move: all of them
+// where one set of operands serves both spins.
+func (p *Propagator) moved(spin, up, down int) (first, count int) {
+	switch {
+	case p.spins == 1:
+		return 0, up + down
+	case spin == hamiltonian.Up:
+		return 0, up
+	}
+	return up, down
+}
+
+// applyHalf sets dst = exp(−τT/2) src for the columns of count walkers.
+func (p *Propagator) applyHalf(dst, src []float64, count, up, down int) {
+	m, columns := p.orbitals, up+down
+	if p.spins == 1 {
+		p.half[0].Mul(count*2*columns, 1, src, m, 0, dst, m)
+		return
+	}
+	for spin := range p.spins {
+		first, n := p.moved(spin, up, down)
+		for i := range count {
+			at := (i*columns + first) * 2 * m
+			p.half[spin].Mul(2*n, 1, src[at:], m, 0, dst[at:], m)
 		}
 	}
 }

@@ -3,7 +3,6 @@ package afqmc
 import (
 	"fmt"
 	"math"
-	"math/rand/v2"
 
 	"leadline/trial"
 	"leadline/trial/determinant"
@@ -28,7 +27,12 @@ type Walk struct {
 	copies           []int        // of each walker in population control
 	tiles            [][2]int
 	crew             *crew
-	deviates         func(step, walker int, y []float64)
+	stream           *stream
+	// deviates overrides the random deviates in tests.
+	deviates func(step, walker int, y []float64)
+	// What the next call of work does to a tile; see Step.
+	orthogonalise, measuring bool
+	work                     func(ws *workspace, tile int)
 }
 
 // event flags what happened to a walker in a step.
@@ -91,7 +95,7 @@ func NewWalk(g *trial.Guide, start trial.Orbitals, o Options) (*Walk, error) {
 		return nil, err
 	}
 	w.tiles = tiles(n)
-	w.deviates = w.normal
+	w.work, w.stream = w.advance, newStream()
 	w.crew = newCrew(min(o.Cores, len(w.tiles)), func() *workspace {
 		size := (n + len(w.tiles) - 1) / len(w.tiles)
 		return &workspace{
@@ -101,6 +105,7 @@ func NewWalk(g *trial.Guide, start trial.Orbitals, o Options) (*Walk, error) {
 			before: make([]trial.Overlap, size),
 			logR:   make([]float64, size),
 			gram:   newGram(h.Orbitals, max(h.Up, h.Down)),
+			stream: newStream(),
 		}
 	})
 	w.crew.run(len(w.tiles), func(ws *workspace, t int) { w.evaluate(ws, w.tiles[t], true) })
@@ -150,48 +155,15 @@ type workspace struct {
 	before []trial.Overlap // after the step, before re-orthogonalisation
 	logR   []float64
 	gram   *gram
-}
-
-// normal fills y with the normal deviates of one walker and step, from a stream
-// keyed by seed, step and walker.
-func (w *Walk) normal(step, walker int, y []float64) {
-	var source rand.PCG
-	seedStream(&source, w.Options.Seed, uint64(step), uint64(walker)+1)
-	rng := rand.New(&source)
-	for g := range y {
-		y[g] = rng.NormFloat64()
-	}
-}
-
-// seedStream keys a generator by hashed seed, step and stream, since raw
-// neighbouring seeds give related streams.
-func seedStream(source *rand.PCG, seed, step, stream uint64) {
-	a := mix(seed + 0x9e3779b97f4a7c15)
-	a = mix(a ^ step*0xbf58476d1ce4e5b9)
-	a = mix(a ^ stream*0x94d049bb133111eb)
-	source.Seed(a, mix(a+0x9e3779b97f4a7c15))
-}
-
-// mix is a bijective hash of 64 bits (the finaliser of splitmix64: Steele, Lea &
-// Flood, OOPSLA 2014, DOI 10.1145/2660193.2660195).
-func mix(x uint64) uint64 {
-	x = (x ^ x>>30) * 0xbf58476d1ce4e5b9
-	x = (x ^ x>>27) * 0x94d049bb133111eb
-	return x ^ x>>31
+	stream *stream
 }
 
 // Step advances all walkers by one time step: propagation, constraint and
 // weights; re-orthogonalisation where orthogonalise is set, local energies where
 // measure is set.
 func (w *Walk) Step(orthogonalise, measure bool) error {
-	w.crew.run(len(w.tiles), func(ws *workspace, t int) {
-		w.propagate(ws, w.tiles[t])
-		w.evaluateMoved(ws, w.tiles[t], orthogonalise)
-		w.reweight(w.tiles[t])
-		if measure {
-			w.localEnergies(ws, w.tiles[t])
-		}
-	})
+	w.orthogonalise, w.measuring = orthogonalise, measure
+	w.crew.run(len(w.tiles), w.work)
 	s := w.State
 	s.Step++
 	s.GrowthTime += s.TrialEnergy * w.Options.TimeStep
@@ -221,11 +193,32 @@ func (w *Walk) Step(orthogonalise, measure bool) error {
 	return nil
 }
 
+// advance does one step of one tile.
+func (w *Walk) advance(ws *workspace, t int) {
+	tile := w.tiles[t]
+	w.propagate(ws, tile)
+	w.evaluateMoved(ws, tile, w.orthogonalise)
+	w.reweight(tile)
+	if w.measuring {
+		w.localEnergies(ws, tile)
+	}
+}
+
+// draw fills the deviates of one walker for the next step.
+func (w *Walk) draw(ws *workspace, walker int) {
+	if w.deviates != nil {
+		w.deviates(w.State.Step, walker, ws.area.deviates)
+		return
+	}
+	ws.stream.key(w.Options.Seed, uint64(w.State.Step), uint64(walker)+1)
+	ws.stream.normal(ws.area.deviates)
+}
+
 // propagate draws the fields of a tile and moves its columns.
 func (w *Walk) propagate(ws *workspace, tile [2]int) {
 	p, ng := w.Propagator, len(w.Propagator.Shift)
 	for i := tile[0]; i < tile[1]; i++ {
-		w.deviates(w.State.Step, i, ws.area.deviates)
+		w.draw(ws, i)
 		fields := w.State.Fields[2*i*ng : 2*(i+1)*ng]
 		number, importance, bounded := p.draw(ws.area, i-tile[0], fields[:ng], fields[ng:])
 		w.importance[i] = importance - number
@@ -333,4 +326,16 @@ func (w *Walk) reweight(tile [2]int) {
 		}
 		s.Weight[i] *= math.Exp(-tau*(hybrid-s.TrialEnergy)) * cosine
 	}
+}
+
+// ImportanceSpread returns the standard deviation over walkers of ln|I| in the
+// last step, the figure that tells a working force bias: it grows like τ.
+func (w *Walk) ImportanceSpread() float64 {
+	n := float64(len(w.importance))
+	var sum, square float64
+	for _, v := range w.importance {
+		sum += real(v)
+		square += real(v) * real(v)
+	}
+	return math.Sqrt(max(0, square/n-sum*sum/(n*n)))
 }

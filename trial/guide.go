@@ -59,9 +59,17 @@ func (g *Guide) Overlaps(m *Mixed, w Walkers) { g.Source.Overlaps(m.Overlap[:w.C
 
 // Evaluate sets m.Overlap, m.Density and m.Fields.
 func (g *Guide) Evaluate(m *Mixed, w Walkers) {
-	g.density.Densities(m.Overlap[:w.Count], m.Density, w)
-	g.rotated.Fields(m, w.Count)
+	g.Densities(m, w)
+	g.Fields(m, w)
 }
+
+// Densities sets m.Overlap and m.Density.
+func (g *Guide) Densities(m *Mixed, w Walkers) {
+	g.density.Densities(m.Overlap[:w.Count], m.Density, w)
+}
+
+// Fields sets m.Fields from m.Density.
+func (g *Guide) Fields(m *Mixed, w Walkers) { g.rotated.Fields(m, w.Count) }
 
 // LocalEnergies sets m.Energy for the walkers last evaluated into m.
 func (g *Guide) LocalEnergies(m *Mixed, w Walkers) { g.energies.LocalEnergies(m, w) }
