@@ -58,3 +58,66 @@ func benchmarkPacked[T float](b *testing.B) {
 func gflops(b *testing.B, flops float64) {
 	b.ReportMetric(flops*float64(b.N)/b.Elapsed().Seconds()*1e-9, "GFLOP/s")
 }
+
+func BenchmarkInvertBatch(b *testing.B) {
+	defer func(was tier) { active = was }(active)
+	for _, t := range tiers() {
+		active = t
+		for _, n := range []int{1, 2, 5, 10, 20, 40, 60} {
+			count := 1 + 4000/(n*n)
+			a := random[float64](rand.New(rand.NewPCG(1, 4)), 2*n*n*count)
+			logAbs, phase := make([]float64, count), make([]complex128, count)
+			b.Run(fmt.Sprintf("%v/%d", t, n), func(b *testing.B) {
+				for b.Loop() {
+					InvertBatch(n, count, a, logAbs, phase)
+				}
+				gflops(b, 8*float64(n*n*n*count))
+				b.ReportMetric(b.Elapsed().Seconds()/float64(b.N*count)*1e9, "ns/matrix")
+			})
+		}
+	}
+}
+
+func BenchmarkLogDetBatch(b *testing.B) {
+	for _, n := range []int{5, 20, 60} {
+		count := 1 + 4000/(n*n)
+		a := random[float64](rand.New(rand.NewPCG(1, 5)), 2*n*n*count)
+		logAbs, phase := make([]float64, count), make([]complex128, count)
+		b.Run(fmt.Sprint(n), func(b *testing.B) {
+			for b.Loop() {
+				LogDetBatch(n, count, a, logAbs, phase)
+			}
+			gflops(b, 8./3*float64(n*n*n*count))
+		})
+	}
+}
+
+func BenchmarkOrthonormalize(b *testing.B) {
+	for _, s := range [][2]int{{20, 5}, {100, 20}, {200, 40}} {
+		rows, cols := s[0], s[1]
+		a := random[float64](rand.New(rand.NewPCG(1, 6)), rows*2*cols)
+		x := append([]float64(nil), a...)
+		b.Run(fmt.Sprintf("%dx%d", rows, cols), func(b *testing.B) {
+			for b.Loop() {
+				copy(x, a)
+				if _, err := Orthonormalize(rows, cols, x, 2*cols); err != nil {
+					b.Fatal(err)
+				}
+			}
+			gflops(b, 16*float64(rows*cols*cols))
+		})
+	}
+}
+
+func BenchmarkPfaffian(b *testing.B) {
+	for _, n := range []int{10, 40} {
+		re := random[float64](rand.New(rand.NewPCG(1, 7)), n*n)
+		im := random[float64](rand.New(rand.NewPCG(1, 8)), n*n)
+		b.Run(fmt.Sprint(n), func(b *testing.B) {
+			for b.Loop() {
+				Pfaffian(n, re, im)
+			}
+			gflops(b, 8./3*float64(n*n*n))
+		})
+	}
+}

@@ -46,3 +46,45 @@ func carve[T float](b *buffer) (left, right []T) {
 	all := unsafe.Slice((*T)(unsafe.Pointer(b)), len(b)*per)
 	return all[: leftSize*per : leftSize*per], all[leftSize*per:]
 }
+
+// workspace is memory for small factorisations.
+type workspace struct {
+	elimination elimination
+	numbers     []float64
+	pivots      []int
+}
+
+var workspaces struct {
+	sync.Mutex
+	free []*workspace
+}
+
+func takeWorkspace() *workspace {
+	workspaces.Lock()
+	defer workspaces.Unlock()
+	if n := len(workspaces.free); n > 0 {
+		w := workspaces.free[n-1]
+		workspaces.free = workspaces.free[:n-1]
+		return w
+	}
+	return new(workspace)
+}
+
+func giveWorkspace(w *workspace) {
+	workspaces.Lock()
+	defer workspaces.Unlock()
+	workspaces.free = append(workspaces.free, w)
+}
+
+// reserve makes room for so many numbers and pivots, and returns the numbers
+// aligned to a cache line. What they hold is undefined.
+func (w *workspace) reserve(numbers, pivots int) []float64 {
+	if len(w.numbers) < numbers+8 {
+		w.numbers = make([]float64, numbers+8)
+	}
+	if len(w.pivots) < pivots {
+		w.pivots = make([]int, pivots)
+	}
+	skip := -int(uintptr(unsafe.Pointer(&w.numbers[0]))/8) & 7
+	return w.numbers[skip:][:numbers]
+}

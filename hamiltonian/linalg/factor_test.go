@@ -15,6 +15,11 @@ func gaussian(rng *rand.Rand, n int) []float64 {
 	return x
 }
 
+func block(n, w int, a []float64) (re, im []float64) {
+	a = a[w*2*n*n : (w+1)*2*n*n]
+	return a[:n*n], a[n*n:]
+}
+
 // leibniz is the determinant as the sum over permutations, by expansion along
 // the first row.
 func leibniz(n int, at func(i, j int) complex128) complex128 {
@@ -52,7 +57,9 @@ func matchings(indices []int, at func(i, j int) complex128) complex128 {
 	return sum
 }
 
-func TestInvertBatch(t *testing.T) {
+func TestInvertBatch(t *testing.T) { eachTier(t, testInvertBatch) }
+
+func testInvertBatch(t *testing.T, _ tier) {
 	rng := rand.New(rand.NewPCG(1, 1))
 	for _, count := range []int{1, 3, 8, 19} {
 		for n := range 34 {
@@ -64,8 +71,8 @@ func TestInvertBatch(t *testing.T) {
 			logOnly, phaseOnly := make([]float64, count), make([]complex128, count)
 			LogDetBatch(n, count, scratch, logOnly, phaseOnly)
 			for w := range count {
-				are, aim := planes(n, w, a)
-				bre, bim := planes(n, w, inverse)
+				are, aim := block(n, w, a)
+				bre, bim := block(n, w, inverse)
 				var norm float64
 				for i := range bre {
 					norm = max(norm, math.Abs(bre[i]), math.Abs(bim[i]))
@@ -99,7 +106,9 @@ func TestInvertBatch(t *testing.T) {
 	}
 }
 
-func TestInvertBatchSingular(t *testing.T) {
+func TestInvertBatchSingular(t *testing.T) { eachTier(t, testInvertBatchSingular) }
+
+func testInvertBatchSingular(t *testing.T, _ tier) {
 	// Row 3 is half of row 1 and all pivots are powers of two: every step is exact.
 	a := []float64{4, 2, 8, 0, 2, 6, 2, 1, 4, 0, 4, 0, 0, 0, 1, 0, 2, 0}
 	b := append([]float64(nil), a...)
@@ -119,7 +128,9 @@ func TestInvertBatchSingular(t *testing.T) {
 	}
 }
 
-func TestInvertBatchNaN(t *testing.T) {
+func TestInvertBatchNaN(t *testing.T) { eachTier(t, testInvertBatchNaN) }
+
+func testInvertBatchNaN(t *testing.T, _ tier) {
 	rng := rand.New(rand.NewPCG(2, 1))
 	const n, count = 4, 9
 	for _, bad := range []float64{math.NaN(), math.Inf(1)} {
@@ -142,11 +153,13 @@ func TestInvertBatchNaN(t *testing.T) {
 	}
 }
 
-func TestOrthonormalize(t *testing.T) {
+func TestOrthonormalize(t *testing.T) { eachTier(t, testOrthonormalize) }
+
+func testOrthonormalize(t *testing.T, _ tier) {
 	rng := rand.New(rand.NewPCG(3, 1))
 	for _, shape := range [][3]int{{1, 1, 2}, {5, 1, 4}, {5, 5, 10}, {9, 4, 21}, {40, 12, 24}, {100, 20, 80}} {
 		rows, cols, stride := shape[0], shape[1], shape[2]
-		for _, condition := range []float64{1, 1e3, 1e10} {
+		for _, condition := range []float64{1, 1e3, 1e6, 1e10} {
 			a := gaussian(rng, rows*stride)
 			for p := range rows { // the last column almost a copy of the first
 				if cols > 1 {
@@ -216,12 +229,24 @@ func gram(rows, cols int, a, b []float64, stride int) []complex128 {
 	return out
 }
 
-func TestOrthonormalizeRefuses(t *testing.T) {
+func TestOrthonormalizeRefuses(t *testing.T) { eachTier(t, testOrthonormalizeRefuses) }
+
+func testOrthonormalizeRefuses(t *testing.T, _ tier) {
 	if _, err := Orthonormalize(3, 2, []float64{1, 1, 0, 0, 2, 2, 0, 0, 3, 3, 0, 0}, 4); err == nil {
 		t.Error("two equal columns passed")
 	}
 	if _, err := Orthonormalize(2, 2, make([]float64, 8), 4); err == nil {
 		t.Error("a zero matrix passed")
+	}
+	rng := rand.New(rand.NewPCG(3, 2))
+	a := gaussian(rng, 30*10)
+	for p := range 30 { // the last of five columns is the sum of the others
+		for _, x := range [][]float64{a[p*10 : p*10+5], a[p*10+5 : p*10+10]} {
+			x[4] = x[0] + x[1] + x[2] + x[3]
+		}
+	}
+	if _, err := Orthonormalize(30, 5, a, 10); err == nil {
+		t.Error("a sum of columns passed")
 	}
 	if _, err := Orthonormalize(1, 2, []float64{1, 0, 0, 1}, 4); err == nil {
 		t.Error("two columns of length one passed")
@@ -234,7 +259,9 @@ func TestOrthonormalizeRefuses(t *testing.T) {
 	}
 }
 
-func TestPfaffian(t *testing.T) {
+func TestPfaffian(t *testing.T) { eachTier(t, testPfaffian) }
+
+func testPfaffian(t *testing.T, _ tier) {
 	rng := rand.New(rand.NewPCG(4, 1))
 	for n := range 25 {
 		re, im := gaussian(rng, n*n), gaussian(rng, n*n)

@@ -6,16 +6,24 @@ import "math"
 // Gauss–Jordan elimination with partial pivoting. Matrix w is the block
 // a[w·2n² : (w+1)·2n²]: n² real parts, row-major, then n² imaginary parts.
 //
-// logAbs[w] and phase[w] receive log|det| and det/|det|. An exactly singular
-// matrix gives -Inf and 0 and is replaced by zeros; a matrix with a NaN or an
+// logAbs[w] and phase[w] receive log|det| and det/|det|. A matrix with an exactly
+// zero pivot gives -Inf and 0 and is replaced by zeros; one with a NaN or an
 // infinity gives NaN throughout. The result for a matrix does not depend on its
-// place in the batch. 8·n³ flops each. Safe for concurrent use on disjoint data.
+// place in the batch. 8·n³ flops each.
 func InvertBatch(n, count int, a []float64, logAbs []float64, phase []complex128) {
 	checkBatch(n, count, a, logAbs, phase)
-	pivots := make([]int, n)
+	e := newElimination(active, n)
+	defer giveWorkspace(e.workspace)
 	for w := range count {
-		re, im := planes(n, w, a)
-		logAbs[w], phase[w] = invert(n, re, im, pivots)
+		block := a[w*2*n*n : (w+1)*2*n*n]
+		e.load(block)
+		det := e.invert()
+		if det.mantissa == 0 {
+			clear(block)
+		} else {
+			e.storeInverse(block)
+		}
+		logAbs[w], phase[w] = det.polar()
 	}
 }
 
@@ -24,9 +32,11 @@ func InvertBatch(n, count int, a []float64, logAbs []float64, phase []complex128
 // (8/3)·n³ flops each.
 func LogDetBatch(n, count int, a []float64, logAbs []float64, phase []complex128) {
 	checkBatch(n, count, a, logAbs, phase)
+	e := newElimination(active, n)
+	defer giveWorkspace(e.workspace)
 	for w := range count {
-		re, im := planes(n, w, a)
-		logAbs[w], phase[w] = logDet(n, re, im)
+		e.load(a[w*2*n*n : (w+1)*2*n*n])
+		logAbs[w], phase[w] = e.determinant().polar()
 	}
 }
 
@@ -39,122 +49,130 @@ func checkBatch(n, count int, a []float64, logAbs []float64, phase []complex128)
 	}
 }
 
-func planes(n, w int, a []float64) (re, im []float64) {
-	a = a[w*2*n*n : (w+1)*2*n*n]
-	return a[:n*n], a[n*n:]
+// elimination holds one matrix at a time, its rows padded to whole vectors.
+type elimination struct {
+	workspace *workspace
+	tier      tier
+	n         int
+	matrix    planes
+	column    planes // of factors, contiguous
+	pivots    []int
 }
 
-// invert is one matrix of InvertBatch; pivots is scratch of length n.
-func invert(n int, re, im []float64, pivots []int) (logAbs float64, phase complex128) {
-	phase = 1
-	for k := range n {
-		p := pivot(n, k, re, im)
-		pivots[k] = p
-		if p != k {
-			swapRows(n, k, p, re, im)
-			phase = -phase
-		}
-		d := complex(re[k*n+k], im[k*n+k])
-		if d == 0 {
-			clear(re)
-			clear(im)
-			return math.Inf(-1), 0
-		}
-		logAbs, phase = accumulate(logAbs, phase, d)
-		re[k*n+k], im[k*n+k] = 1, 0
-		inv := 1 / d
-		kre, kim := re[k*n:k*n+n], im[k*n:k*n+n]
-		scale(inv, kre, kim)
-		for i := range n {
-			if i == k {
-				continue
-			}
-			f := complex(re[i*n+k], im[i*n+k])
-			re[i*n+k], im[i*n+k] = 0, 0
-			subtract(f, kre, kim, re[i*n:i*n+n], im[i*n:i*n+n])
-		}
+func newElimination(t tier, n int) *elimination {
+	w := takeWorkspace()
+	ld := padded(t, n)
+	x := w.reserve(2*n*ld+2*ld, n)
+	e := &w.elimination
+	*e = elimination{
+		workspace: w, tier: t, n: n, pivots: w.pivots[:n],
+		matrix: planes{re: x[:n*ld], im: x[n*ld : 2*n*ld], stride: ld},
+		column: planes{re: x[2*n*ld:][:ld], im: x[2*n*ld+ld:]},
+	}
+	clear(x) // the padding must not hold numbers that are slow to add
+	return e
+}
+
+func (e *elimination) load(block []float64) {
+	n, m := e.n, e.matrix
+	for i := range n {
+		copy(m.re[i*m.stride:], block[i*n:i*n+n])
+		copy(m.im[i*m.stride:], block[n*n+i*n:n*n+i*n+n])
+	}
+}
+
+// storeInverse writes the matrix with the exchanges of its rows undone, which
+// are exchanges of columns of the inverse, last one first.
+func (e *elimination) storeInverse(block []float64) {
+	n, m := e.n, e.matrix
+	from := e.column.re // as numbers: where column j comes from
+	for j := range n {
+		from[j] = float64(j)
 	}
 	for k := n - 1; k >= 0; k-- {
-		if p := pivots[k]; p != k {
-			for i := 0; i < n*n; i += n {
-				re[i+k], re[i+p] = re[i+p], re[i+k]
-				im[i+k], im[i+p] = im[i+p], im[i+k]
+		p := e.pivots[k]
+		from[k], from[p] = from[p], from[k]
+	}
+	for j, c := range from[:n] {
+		e.pivots[j] = int(c)
+	}
+	for i := range n {
+		re, im := m.re[i*m.stride:][:n], m.im[i*m.stride:][:n]
+		toRe, toIm := block[i*n:][:n], block[n*n+i*n:][:n]
+		for j, c := range e.pivots {
+			toRe[j], toIm[j] = re[c], im[c]
+		}
+	}
+}
+
+// takeColumn copies rows [from, n) of column k to e.column and zeros them in the
+// matrix from row zero on, and returns the row of the largest |re|+|im| at or
+// below k; a NaN counts as the largest.
+func (e *elimination) takeColumn(k, from int) int {
+	m := e.matrix
+	best, at := uint64(0), k
+	for i := from; i < e.n; i++ {
+		re, im := &m.re[i*m.stride+k], &m.im[i*m.stride+k]
+		e.column.re[i], e.column.im[i] = *re, *im
+		if i >= k {
+			// Magnitudes order like their bits.
+			if size := math.Float64bits(math.Abs(*re) + math.Abs(*im)); size > best {
+				best, at = size, i
 			}
 		}
-	}
-	return logAbs, phase
-}
-
-// logDet is one matrix of LogDetBatch.
-func logDet(n int, re, im []float64) (logAbs float64, phase complex128) {
-	phase = 1
-	for k := range n {
-		if p := pivot(n, k, re, im); p != k {
-			swapRows(n, k, p, re, im)
-			phase = -phase
-		}
-		d := complex(re[k*n+k], im[k*n+k])
-		if d == 0 {
-			return math.Inf(-1), 0
-		}
-		logAbs, phase = accumulate(logAbs, phase, d)
-		inv := 1 / d
-		kre, kim := re[k*n+k+1:k*n+n], im[k*n+k+1:k*n+n]
-		for i := k + 1; i < n; i++ {
-			f := complex(re[i*n+k], im[i*n+k]) * inv
-			subtract(f, kre, kim, re[i*n+k+1:i*n+n], im[i*n+k+1:i*n+n])
-		}
-	}
-	return logAbs, phase
-}
-
-// pivot returns the row at or below k with the largest |re|+|im| in column k;
-// the first NaN wins.
-func pivot(n, k int, re, im []float64) int {
-	best, at := -1.0, k
-	for i := k; i < n; i++ {
-		size := math.Abs(re[i*n+k]) + math.Abs(im[i*n+k])
-		if size != size {
-			return i
-		}
-		if size > best {
-			best, at = size, i
-		}
+		*re, *im = 0, 0
 	}
 	return at
 }
 
-func swapRows(n, i, j int, re, im []float64) {
-	for q := range n {
-		re[i*n+q], re[j*n+q] = re[j*n+q], re[i*n+q]
-		im[i*n+q], im[j*n+q] = im[j*n+q], im[i*n+q]
+// step takes column k, brings the pivot row to place k and divides it by the
+// pivot, from column j on; the factors of the rows from row from on are left in
+// e.column. It reports whether the pivot is not zero.
+func (e *elimination) step(k, from, j int, det *determinant) bool {
+	p := e.takeColumn(k, from)
+	e.pivots[k] = p
+	re, im := e.column.re, e.column.im
+	d := complex(re[p], im[p])
+	det.multiply(d)
+	if p != k {
+		e.matrix.swapRows(k, p, j)
+		det.mantissa = -det.mantissa
+		re[p], im[p] = re[k], im[k]
 	}
+	re[k], im[k] = 0, 0
+	if d == 0 {
+		return false
+	}
+	inverse := reciprocal(d)
+	e.matrix.scaleRow(k, j, inverse)
+	e.matrix.re[k*e.matrix.stride+k] = real(inverse)
+	e.matrix.im[k*e.matrix.stride+k] = imag(inverse)
+	return true
 }
 
-// accumulate multiplies a number held as log-magnitude and phase by d.
-func accumulate(logAbs float64, phase, d complex128) (float64, complex128) {
-	size := math.Hypot(real(d), imag(d))
-	if math.IsInf(size, 0) {
-		size = math.NaN()
+// invert turns the matrix into the inverse of itself with its rows exchanged.
+func (e *elimination) invert() determinant {
+	det := one
+	for k := range e.n {
+		if !e.step(k, 0, 0, &det) {
+			break
+		}
+		e.matrix.subtractOuter(e.tier, 0, e.n, 0, e.column, e.matrix, k)
 	}
-	return logAbs + math.Log(size), phase * complex(real(d)/size, imag(d)/size)
+	return det
 }
 
-// scale multiplies a complex row by f.
-func scale(f complex128, re, im []float64) {
-	fr, fi := real(f), imag(f)
-	im = im[:len(re)]
-	for j, r := range re {
-		re[j], im[j] = fr*r-fi*im[j], fr*im[j]+fi*r
+// determinant reduces the matrix to triangular form.
+func (e *elimination) determinant() determinant {
+	det := one
+	lane := lanes[float64](e.tier)
+	for k := range e.n {
+		j := k / lane * lane
+		if !e.step(k, k, j, &det) {
+			break
+		}
+		below := planes{re: e.column.re[k+1:], im: e.column.im[k+1:]}
+		e.matrix.subtractOuter(e.tier, k+1, e.n-k-1, j, below, e.matrix, k)
 	}
-}
-
-// subtract computes y ← y − f·x for complex rows.
-func subtract(f complex128, xre, xim, yre, yim []float64) {
-	fr, fi := real(f), imag(f)
-	xim, yre, yim = xim[:len(xre)], yre[:len(xre)], yim[:len(xre)]
-	for j, r := range xre {
-		yre[j] -= fr*r - fi*xim[j]
-		yim[j] -= fr*xim[j] + fi*r
-	}
+	return det
 }

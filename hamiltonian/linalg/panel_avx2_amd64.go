@@ -23,4 +23,7 @@ func panel1AVX2(p *byte)
 func edge1AVX2(p *byte)
 
 //go:noescape
+func outerAVX2(p *byte)
+
+//go:noescape
 func transposeAVX2(dst *float64, dstRow int, src *float64, srcRow int, rows int, cols int)

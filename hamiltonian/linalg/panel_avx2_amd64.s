@@ -1434,6 +1434,158 @@ below1:
 	VZEROUPPER
 	RET
 
+// func outerAVX2(p *byte)
+// Requires: AVX, FMA3
+TEXT ·outerAVX2(SB), NOSPLIT, $0-8
+	MOVQ p+0(FP), AX
+	MOVQ 8(AX), CX
+	MOVQ 32(AX), DX
+	MOVQ 40(AX), BX
+	MOVQ 48(AX), SI
+	MOVQ 56(AX), DI
+	MOVQ 64(AX), R8
+
+chunk3:
+	CMPQ    CX, $0x03
+	JLT     below3
+	VMOVUPD (DX), Y0
+	VMOVUPD (BX), Y3
+	VMOVUPD 32(DX), Y1
+	VMOVUPD 32(BX), Y4
+	VMOVUPD 64(DX), Y2
+	VMOVUPD 64(BX), Y5
+	MOVQ    (AX), R9
+	MOVQ    16(AX), R10
+	MOVQ    24(AX), R11
+	MOVQ    SI, R12
+	MOVQ    DI, R13
+
+row3:
+	VBROADCASTSD (R10), Y6
+	VBROADCASTSD (R11), Y7
+	VMOVUPD      (R12), Y8
+	VMOVUPD      (R13), Y9
+	VFNMADD231PD Y0, Y6, Y8
+	VFNMADD231PD Y3, Y6, Y9
+	VMOVUPD      32(R12), Y10
+	VMOVUPD      32(R13), Y11
+	VFNMADD231PD Y1, Y6, Y10
+	VFNMADD231PD Y4, Y6, Y11
+	VMOVUPD      64(R12), Y12
+	VMOVUPD      64(R13), Y13
+	VFNMADD231PD Y2, Y6, Y12
+	VFNMADD231PD Y5, Y6, Y13
+	VFMADD231PD  Y3, Y7, Y8
+	VFNMADD231PD Y0, Y7, Y9
+	VMOVUPD      Y8, (R12)
+	VMOVUPD      Y9, (R13)
+	VFMADD231PD  Y4, Y7, Y10
+	VFNMADD231PD Y1, Y7, Y11
+	VMOVUPD      Y10, 32(R12)
+	VMOVUPD      Y11, 32(R13)
+	VFMADD231PD  Y5, Y7, Y12
+	VFNMADD231PD Y2, Y7, Y13
+	VMOVUPD      Y12, 64(R12)
+	VMOVUPD      Y13, 64(R13)
+	ADDQ         $0x08, R10
+	ADDQ         $0x08, R11
+	ADDQ         R8, R12
+	ADDQ         R8, R13
+	DECQ         R9
+	JNE          row3
+	ADDQ         $+96, DX
+	ADDQ         $+96, BX
+	ADDQ         $+96, SI
+	ADDQ         $+96, DI
+	SUBQ         $0x03, CX
+	JMP          chunk3
+
+below3:
+chunk2:
+	CMPQ    CX, $0x02
+	JLT     below2
+	VMOVUPD (DX), Y0
+	VMOVUPD (BX), Y2
+	VMOVUPD 32(DX), Y1
+	VMOVUPD 32(BX), Y3
+	MOVQ    (AX), R9
+	MOVQ    16(AX), R10
+	MOVQ    24(AX), R11
+	MOVQ    SI, R12
+	MOVQ    DI, R13
+
+row2:
+	VBROADCASTSD (R10), Y4
+	VBROADCASTSD (R11), Y5
+	VMOVUPD      (R12), Y6
+	VMOVUPD      (R13), Y7
+	VFNMADD231PD Y0, Y4, Y6
+	VFNMADD231PD Y2, Y4, Y7
+	VMOVUPD      32(R12), Y8
+	VMOVUPD      32(R13), Y9
+	VFNMADD231PD Y1, Y4, Y8
+	VFNMADD231PD Y3, Y4, Y9
+	VFMADD231PD  Y2, Y5, Y6
+	VFNMADD231PD Y0, Y5, Y7
+	VMOVUPD      Y6, (R12)
+	VMOVUPD      Y7, (R13)
+	VFMADD231PD  Y3, Y5, Y8
+	VFNMADD231PD Y1, Y5, Y9
+	VMOVUPD      Y8, 32(R12)
+	VMOVUPD      Y9, 32(R13)
+	ADDQ         $0x08, R10
+	ADDQ         $0x08, R11
+	ADDQ         R8, R12
+	ADDQ         R8, R13
+	DECQ         R9
+	JNE          row2
+	ADDQ         $+64, DX
+	ADDQ         $+64, BX
+	ADDQ         $+64, SI
+	ADDQ         $+64, DI
+	SUBQ         $0x02, CX
+	JMP          chunk2
+
+below2:
+chunk1:
+	CMPQ    CX, $0x01
+	JLT     below1
+	VMOVUPD (DX), Y0
+	VMOVUPD (BX), Y1
+	MOVQ    (AX), R9
+	MOVQ    16(AX), R10
+	MOVQ    24(AX), R11
+	MOVQ    SI, R12
+	MOVQ    DI, R13
+
+row1:
+	VBROADCASTSD (R10), Y2
+	VBROADCASTSD (R11), Y3
+	VMOVUPD      (R12), Y4
+	VMOVUPD      (R13), Y5
+	VFNMADD231PD Y0, Y2, Y4
+	VFNMADD231PD Y1, Y2, Y5
+	VFMADD231PD  Y1, Y3, Y4
+	VFNMADD231PD Y0, Y3, Y5
+	VMOVUPD      Y4, (R12)
+	VMOVUPD      Y5, (R13)
+	ADDQ         $0x08, R10
+	ADDQ         $0x08, R11
+	ADDQ         R8, R12
+	ADDQ         R8, R13
+	DECQ         R9
+	JNE          row1
+	ADDQ         $+32, DX
+	ADDQ         $+32, BX
+	ADDQ         $+32, SI
+	ADDQ         $+32, DI
+	SUBQ         $0x01, CX
+	JMP          chunk1
+
+below1:
+	VZEROUPPER
+	RET
+
 // func transposeAVX2(dst *float64, dstRow int, src *float64, srcRow int, rows int, cols int)
 // Requires: AVX
 TEXT ·transposeAVX2(SB), NOSPLIT, $0-48

@@ -21,3 +21,6 @@ func panel1AVX512(p *byte)
 
 //go:noescape
 func edge1AVX512(p *byte)
+
+//go:noescape
+func outerAVX512(p *byte)

@@ -146,3 +146,11 @@ func transposeBlock[T float](dst []T, dstRow int, src []T, srcRow, rows, cols in
 	}
 	return r, c
 }
+
+func runOuter(t tier, o *outer) {
+	if t == avx512 {
+		outerAVX512((*byte)(unsafe.Pointer(o)))
+	} else {
+		outerAVX2((*byte)(unsafe.Pointer(o)))
+	}
+}

@@ -26,6 +26,9 @@ func main() {
 		s.panel(vectors, false)
 		s.panel(vectors, true)
 	}
+	if s.double {
+		s.outer()
+	}
 	if !s.avx512 {
 		s.transpose()
 	}
