@@ -12,6 +12,7 @@ import (
 	"leadline/hamiltonian/meanfield"
 	"leadline/trial"
 	"leadline/trial/determinant"
+	"leadline/trial/expansion"
 )
 
 // guidance is the trial of a job, bound to its Hamiltonian.
@@ -22,6 +23,9 @@ type guidance struct {
 	meanField float64
 	reference string // rhf, rohf, uhf or file
 	notes     []string
+	warnings  []afqmc.Warning
+	// expansion is the trial where it is one.
+	expansion *expansion.Expansion
 }
 
 // newGuidance builds the trial that a job asks for.
@@ -32,6 +36,8 @@ func newGuidance(ctx context.Context, j *job.Job, in *inputs, s *system) (*guida
 	switch j.Trial.Kind {
 	case "determinant":
 		source, err = g.determinant(ctx, j, in, s)
+	case "expansion":
+		source, err = g.expand(ctx, j, in, s)
 	default:
 		err = fmt.Errorf("trial kind %q is not available in this version", j.Trial.Kind)
 	}
@@ -59,13 +65,22 @@ func (g *guidance) determinant(ctx context.Context, j *job.Job, in *inputs, s *s
 		g.meanField = source.Energy(s.hamiltonian)
 		return source, nil
 	}
+	reference, err := g.solveReference(ctx, j, s)
+	if err != nil {
+		return nil, err
+	}
+	return determinant.New(s.hamiltonian.Orbitals, occupied(reference))
+}
+
+// solveReference solves the mean field that the job names.
+func (g *guidance) solveReference(ctx context.Context, j *job.Job, s *system) (*meanfield.Solution, error) {
 	reference, err := s.reference(ctx, j.Trial.Orbitals)
 	if err != nil {
 		return nil, err
 	}
 	g.meanField = reference.Energy
 	g.notes = append(g.notes, reference.Notes...)
-	return determinant.New(s.hamiltonian.Orbitals, occupied(reference))
+	return reference, nil
 }
 
 // reference solves the mean field of the given name.

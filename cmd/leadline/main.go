@@ -18,7 +18,6 @@ import (
 
 	"github.com/spf13/cobra"
 	//BLAS "gonum.org/v1/gonum/blas/blas64"
-
 	//BLAS "leadline/hamiltonian/linalg"
 )
 
@@ -69,7 +68,7 @@ func command(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 	root.SetOut(stdout)
 	root.SetErr(stderr)
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return usageError{err} })
-	root.AddCommand(runCommand(stderr), inspectCommand(stderr), initCommand(stderr))
+	root.AddCommand(runCommand(stderr), exactCommand(stderr), inspectCommand(stderr), initCommand(stderr))
 	root.CompletionOptions.HiddenDefaultCmd = true
 
 	err := root.ExecuteContext(ctx)

@@ -6,6 +6,7 @@ import (
 	"io"
 	"path/filepath"
 	"runtime"
+	"slices"
 	"strings"
 	"time"
 
@@ -13,6 +14,7 @@ import (
 
 	"leadline/afqmc"
 	"leadline/cmd/leadline/job"
+	"leadline/hamiltonian/exact"
 	"leadline/hamiltonian/linalg"
 )
 
@@ -24,6 +26,7 @@ type runFlags struct {
 	seed      int64
 	cores     int
 	quiet     bool
+	exact     bool
 }
 
 func runCommand(stderr io.Writer) *cobra.Command {
@@ -54,6 +57,7 @@ func runCommand(stderr io.Writer) *cobra.Command {
 	flags.BoolVar(&f.json, "json", false, "print the summary as one JSON object")
 	flags.Int64Var(&f.seed, "seed", 0, "random seed, in place of the job's")
 	flags.IntVar(&f.cores, "cores", runtime.GOMAXPROCS(0), "goroutines that propagate walkers")
+	flags.BoolVar(&f.exact, "exact", false, "add the exact energy (full CI), where it fits in memory")
 	flags.BoolVar(&f.quiet, "quiet", false, "no progress on stderr")
 	return c
 }
@@ -104,6 +108,18 @@ func runJob(ctx context.Context, name string, f runFlags, seeded bool, stdout, s
 		return err
 	}
 
+	var reference *exactResult
+	if f.exact {
+		var spin *float64
+		if exact.CommutesWithSpin(h) {
+			kept := s.spin()
+			spin = &kept
+		}
+		if reference, err = s.exact(ctx, 1, spin, shown); err != nil {
+			return err
+		}
+	}
+
 	dir, err := resultDirectory(f.output, name, f.overwrite)
 	if err != nil {
 		return err
@@ -135,9 +151,9 @@ func runJob(ctx context.Context, name string, f runFlags, seeded bool, stdout, s
 		return err
 	}
 	out.add(result)
-	out.Warnings = append(s.warnings, out.Warnings...)
-	if out.Warnings == nil {
-		out.Warnings = []afqmc.Warning{}
+	out.Warnings = slices.Concat([]afqmc.Warning{}, s.warnings, g.warnings, out.Warnings)
+	if reference != nil {
+		out.ExactEnergy = &reference.ExactEnergy
 	}
 	if err := writeSummary(dir, out); err != nil {
 		return err
@@ -241,6 +257,12 @@ func (out *summary) print(w io.Writer, s *system, g *guidance, dir string) error
 	}
 	if out.Energy != nil && out.MeanFieldEnergy != nil && out.Unit == "hartree" {
 		fmt.Fprintf(&b, "  correlation  %s\n", differenceText(*out.Energy-*out.MeanFieldEnergy, out.Error))
+	}
+	if out.ExactEnergy != nil {
+		fmt.Fprintf(&b, "  exact        %s %s (full CI)\n", quoted(*out.ExactEnergy, 0), unit)
+		if out.Energy != nil && out.Error != nil {
+			fmt.Fprintf(&b, "  deviation    %s %s\n", quoted(*out.Energy-*out.ExactEnergy, *out.Error), unit)
+		}
 	}
 	fmt.Fprintf(&b, "\n  phaseless AFQMC, %d walkers, time step %g, %.4g of imaginary time sampled", out.Walkers, out.TimeStep, out.ImaginaryTime)
 	if out.AutocorrelationTm != nil {

@@ -3,6 +3,7 @@ package main
 import (
 	"context"
 	"fmt"
+	"math"
 
 	"gonum.org/v1/gonum/mat"
 
@@ -11,8 +12,10 @@ import (
 	"leadline/hamiltonian"
 	"leadline/hamiltonian/basis"
 	"leadline/hamiltonian/fcidump"
+	"leadline/hamiltonian/hubbard"
 	"leadline/hamiltonian/meanfield"
 	"leadline/hamiltonian/molecule"
+	"leadline/hamiltonian/pairing"
 )
 
 // system is what a job solves: the Hamiltonian and its mean field.
@@ -24,7 +27,9 @@ type system struct {
 	unit     string
 	constant float64 // before freezing
 	frozen   int
-	residual float64 // left by the factorisation on any diagonal integral
+	// basisFile is the file that fixes the orbitals, empty where none does.
+	basisFile string
+	residual  float64 // left by the factorisation on any diagonal integral
 	// start is the spin-pure determinant (RHF or ROHF) that walkers start from.
 	start    *meanfield.Solution
 	guess    [2]*mat.SymDense
@@ -46,6 +51,10 @@ func newSystem(ctx context.Context, j *job.Job, in *inputs, progress progressFun
 		err = s.fromIntegrals(ctx, j, in, progress)
 	case "molecule":
 		err = s.fromMolecule(ctx, j, in, progress)
+	case "hubbard":
+		err = s.fromHubbard(j)
+	case "pairing":
+		err = s.fromPairing(j)
 	default:
 		err = fmt.Errorf("hamiltonian source %q is not available in this version", j.Hamiltonian.Source)
 	}
@@ -75,6 +84,49 @@ func newSystem(ctx context.Context, j *job.Job, in *inputs, progress progressFun
 	return s, nil
 }
 
+// spin returns the total spin S of the start, which the projection keeps.
+func (s *system) spin() float64 {
+	return 0.5 * math.Abs(float64(s.hamiltonian.Up-s.hamiltonian.Down))
+}
+
+// fingerprint returns the hash of the file that fixes the orbitals, empty where
+// none does.
+func (s *system) fingerprint(in *inputs) string { return in.hashes[s.basisFile] }
+
+func (s *system) fromHubbard(j *job.Job) error {
+	m := hubbard.Model{
+		Sites:     j.Hamiltonian.Sites,
+		Periodic:  j.Hamiltonian.Periodic,
+		Hopping:   j.Hamiltonian.Hopping,
+		Repulsion: j.Hamiltonian.Repulsion,
+		Up:        j.Hamiltonian.Up,
+		Down:      j.Hamiltonian.Down,
+	}
+	m.Decomposition = hubbard.Charge
+	var err error
+	if s.spinFree, err = m.Hamiltonian(); err != nil {
+		return err
+	}
+	s.hamiltonian, s.unit = s.spinFree, "hopping"
+	if j.Hamiltonian.Decomposition == "spin" {
+		m.Decomposition = hubbard.Spin
+		s.hamiltonian, err = m.Hamiltonian()
+	}
+	return err
+}
+
+func (s *system) fromPairing(j *job.Job) (err error) {
+	m := pairing.Model{
+		Levels:   j.Hamiltonian.Levels,
+		Spacing:  j.Hamiltonian.Spacing,
+		Coupling: j.Hamiltonian.Coupling,
+		Pairs:    j.Hamiltonian.Pairs,
+	}
+	s.unit = "level spacing"
+	s.hamiltonian, err = m.Hamiltonian()
+	return err
+}
+
 func (s *system) fromIntegrals(ctx context.Context, j *job.Job, in *inputs, progress progressFunc) error {
 	name := j.Hamiltonian.File
 	file, size, err := in.open(name)
@@ -96,6 +148,9 @@ func (s *system) fromIntegrals(ctx context.Context, j *job.Job, in *inputs, prog
 		return fmt.Errorf("hamiltonian.frozen_core: \"auto\" needs the atoms of a molecule; give a number of orbitals")
 	}
 	s.frozen = int(j.Hamiltonian.FrozenCore)
+	if s.frozen == 0 {
+		s.basisFile = name
+	}
 	return nil
 }
 

@@ -1,0 +1,128 @@
+package main
+
+import (
+	"context"
+	"fmt"
+	"io"
+	"math"
+
+	"github.com/spf13/cobra"
+
+	"leadline/cmd/leadline/job"
+	"leadline/hamiltonian/exact"
+)
+
+// exactResult is what leadline exact --json prints.
+type exactResult struct {
+	ExactEnergy  float64      `json:"exact_energy"`
+	States       []exactState `json:"states"`
+	Determinants int          `json:"determinants"`
+	Unit         string       `json:"unit"`
+}
+
+type exactState struct {
+	Energy      float64 `json:"energy"`
+	SpinSquared float64 `json:"spin_squared"`
+}
+
+func exactCommand(stderr io.Writer) *cobra.Command {
+	var states int
+	var spin float64
+	var asJSON, quiet bool
+	c := &cobra.Command{
+		Use:   "exact JOB.toml",
+		Short: "Full CI in the job's orbital space, where it fits in memory",
+		Args:  arguments(cobra.ExactArgs(1)),
+		RunE: func(c *cobra.Command, args []string) error {
+			if states < 1 {
+				return usageError{fmt.Errorf("--states is %d, expected at least 1", states)}
+			}
+			var only *float64
+			if c.Flags().Changed("spin") {
+				if spin < 0 || spin*2 != math.Trunc(spin*2) {
+					return usageError{fmt.Errorf("--spin is %g, expected a multiple of one half", spin)}
+				}
+				only = &spin
+			}
+			in, text, name, err := openJob(args[0])
+			if err != nil {
+				return err
+			}
+			j, err := job.Parse(text, name)
+			if err != nil {
+				return err
+			}
+			shown := display{out: stderr, quiet: quiet}
+			s, err := newSystem(c.Context(), j, in, shown.stage)
+			if err != nil {
+				return err
+			}
+			result, err := s.exact(c.Context(), states, only, shown)
+			if err != nil {
+				return err
+			}
+			if asJSON {
+				return encode(c.OutOrStdout(), result)
+			}
+			return result.print(c.OutOrStdout(), j.Title)
+		},
+	}
+	c.Flags().IntVar(&states, "states", 1, "number of states, the lowest ones")
+	c.Flags().Float64Var(&spin, "spin", 0, "only states of this total spin S")
+	c.Flags().BoolVar(&asJSON, "json", false, "print one JSON object")
+	c.Flags().BoolVar(&quiet, "quiet", false, "no progress on stderr")
+	return c
+}
+
+// exact solves the whole orbital space. It says beforehand what it needs.
+func (s *system) exact(ctx context.Context, states int, spin *float64, shown display) (*exactResult, error) {
+	h := s.hamiltonian
+	determinants, bytes := exact.Estimate(h.Sector, states)
+	need := fmt.Sprintf("full CI of %d orbitals, %d up and %d down electrons", h.Orbitals, h.Up, h.Down)
+	if determinants == math.MaxInt || bytes == math.MaxInt64 {
+		return nil, fmt.Errorf("%s: far too many determinants", need)
+	}
+	if err := checkMemory(bytes, fmt.Sprintf("%s (%d determinants)", need, determinants)); err != nil {
+		return nil, err
+	}
+	say := func(format string, args ...any) {
+		if !shown.quiet {
+			fmt.Fprintf(shown.out, format+"\n", args...)
+		}
+	}
+	say("%s: %d determinants, %s of memory", need, determinants, bytesText(bytes))
+	result, err := exact.Solve(ctx, h, exact.Options{
+		States: states, Spin: spin, MemoryLimit: math.MaxInt64,
+		Progress: func(iteration int, residual float64) {
+			if iteration%5 == 0 {
+				say("  iteration %d: residual %.1e", iteration, residual)
+			}
+		},
+	})
+	if err != nil {
+		return nil, err
+	}
+	out := &exactResult{Determinants: determinants, Unit: s.unit}
+	for _, state := range result.States {
+		out.States = append(out.States, exactState{state.Energy, state.SpinSquared})
+	}
+	out.ExactEnergy = out.States[0].Energy
+	return out, nil
+}
+
+func (r *exactResult) print(w io.Writer, title string) error {
+	unit := symbol(r.Unit)
+	if _, err := fmt.Fprintf(w, "%s\n\n  full CI, %d determinants\n", title, r.Determinants); err != nil {
+		return err
+	}
+	for i, state := range r.States {
+		difference := ""
+		if i > 0 {
+			difference = fmt.Sprintf(", %s %s above the first", quoted(state.Energy-r.States[0].Energy, 0), unit)
+		}
+		if _, err := fmt.Fprintf(w, "  state %-3d energy %s %s, <S^2> = %.4f%s\n", i+1, quoted(state.Energy, 0), unit, state.SpinSquared, difference); err != nil {
+			return err
+		}
+	}
+	return nil
+}
