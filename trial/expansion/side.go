@@ -99,13 +99,51 @@ func (s *Source) projectOnSupport(a *form, w trial.Walkers, spin int) {
 	}
 }
 
+// Thresholds of the choice of reference: a row of the preferred string is taken
+// while its element is not smaller than preference times the largest one, and the
+// result is kept while no element of θ is larger than largestTheta. Either only
+// bounds the growth of rounding errors; what they buy is that most walkers of a
+// tile have one reference.
+const (
+	preference   = 0.1
+	largestTheta = 8
+)
+
 // pivot exchanges every column of S†φ with a row: first the core's rows, then
-// those active rows that have the largest elements left, with complete pivoting
-// in both. The exchanged rows then hold (φ_occ)⁻¹, the others φ (φ_occ)⁻¹. It
+// active rows. The exchanged rows then hold (φ_occ)⁻¹, the others φ (φ_occ)⁻¹. It
 // sets log and phase of det φ_occ, rows ascending, and returns the active rows
 // taken as a string; ok is false where the rows' rank is too small or a number is
 // not finite (then log is NaN).
 func (s *Source) pivot(a *form, i, spin int) (reference uint64, ok bool) {
+	reference, ok = s.pivotWith(a, i, spin, s.preferred[spin])
+	if ok && s.thetaSize(a, spin, reference) <= largestTheta {
+		return reference, true
+	}
+	return s.pivotWith(a, i, spin, 0)
+}
+
+// thetaSize returns the largest |re|+|im| of θ in the exchanged matrix.
+func (s *Source) thetaSize(a *form, spin int, reference uint64) float64 {
+	n := s.sector.Electrons(spin)
+	var most float64
+	for p := range s.active {
+		if reference>>p&1 == 1 {
+			continue
+		}
+		row := a.exchange[(s.core+p)*n:][:n]
+		for k, r := range a.row[:n] {
+			if r >= s.core {
+				v := row[a.col[k]]
+				most = max(most, math.Abs(real(v))+math.Abs(imag(v)))
+			}
+		}
+	}
+	return most
+}
+
+// pivotWith is pivot with complete pivoting, but for the rows of a preferred
+// string, 0 for none.
+func (s *Source) pivotWith(a *form, i, spin int, preferred uint64) (reference uint64, ok bool) {
 	n, ns := s.sector.Electrons(spin), s.supported()
 	x := a.exchange[:ns*n]
 	for j := range n {
@@ -120,11 +158,11 @@ func (s *Source) pivot(a *form, i, spin int) (reference uint64, ok bool) {
 	rows, columns := a.taken[:ns], a.taken[ns:]
 	magnitude, phase := 0.0, complex128(1)
 	for step := range n {
-		from, to := 0, s.core
+		from, to, wanted := 0, s.core, uint64(0)
 		if step >= s.core {
-			from, to = s.core, ns
+			from, to, wanted = s.core, ns, preferred
 		}
-		row, col, size := largest(x, n, from, to, rows, columns)
+		row, col, size := largest(x, n, from, to, rows, columns, wanted)
 		if size == 0 {
 			a.log[i], a.phase[i] = math.Inf(-1), 0
 			return 0, false
@@ -164,23 +202,37 @@ func (s *Source) pivot(a *form, i, spin int) (reference uint64, ok bool) {
 }
 
 // largest finds the element of largest |re|+|im| among rows from ≤ r < to and
-// columns not yet taken; the first NaN wins.
-func largest(x []complex128, n, from, to int, rows, columns []bool) (row, col int, size float64) {
+// columns not yet taken, or the largest in a preferred row (bit r−from set) if it
+// is not much smaller; the first NaN wins.
+func largest(x []complex128, n, from, to int, rows, columns []bool, preferred uint64) (row, col int, size float64) {
+	var wantedRow, wantedCol int
+	var wantedSize float64
 	for r := from; r < to; r++ {
 		if rows[r] {
 			continue
 		}
+		var best float64
+		at := -1
 		for c, v := range x[r*n : r*n+n] {
 			if columns[c] {
 				continue
 			}
 			a := math.Abs(real(v)) + math.Abs(imag(v))
-			if a > size {
-				row, col, size = r, c, a
+			if a > best {
+				at, best = c, a
 			} else if a != a {
 				return r, c, a
 			}
 		}
+		if best > size {
+			row, col, size = r, at, best
+		}
+		if best > wantedSize && preferred>>(r-from)&1 == 1 {
+			wantedRow, wantedCol, wantedSize = r, at, best
+		}
+	}
+	if wantedSize >= preference*size {
+		return wantedRow, wantedCol, wantedSize
 	}
 	return row, col, size
 }

@@ -23,6 +23,7 @@ type Source struct {
 	support   trial.Support
 	columns   *linalg.Packed // S, M×(core+active); nil for the first orbitals
 	spaces    [2]*space      // one and the same for equal numbers of electrons
+	preferred [2]uint64      // strings of the leading determinant
 	c         coefficients
 	scale     float64 // ln of the amplitude that C is divided by
 	symmetric bool    // C = Cᵀ: up and down may be exchanged
@@ -167,6 +168,8 @@ func (s *Source) setCoefficients() {
 	slices.SortFunc(elements, func(a, b element) int {
 		return cmp.Or(cmp.Compare(a.at[0], b.at[0]), cmp.Compare(a.at[1], b.at[1]))
 	})
+	leading := slices.MaxFunc(list, func(a, b Determinant) int { return cmp.Compare(magnitude(a), magnitude(b)) })
+	s.preferred = [2]uint64{leading.Up, leading.Down}
 	s.symmetric = e.Up == e.Down && isSymmetric(elements)
 	up, down := len(masks[0]), len(masks[1])
 	if useSparse {
