@@ -64,10 +64,10 @@ func localise(h *hamiltonian.Hamiltonian, c *mat.Dense, a, b int, seed uint64) *
 	return out
 }
 
-// bestAngle returns the rotation p' = p cos + q sin, q' = q cos − p sin that
-// maximises (pp|pp) + (qq|qq). With A = Σ s [L_pq² − ¼(L_pp − L_qq)²] and
-// B = Σ s L_pq (L_pp − L_qq), the sum changes by A + A' cos 4α + B sin 4α with
-// A' = −A, so 4α = atan2(B, −A).
+// bestAngle returns the angle α of the rotation p' = p cos α + q sin α,
+// q' = q cos α − p sin α that maximises (pp|pp) + (qq|qq), which is a constant
+// plus B sin 4α − A cos 4α with A = Σ s [L_pq² − ¼(L_pp − L_qq)²] and
+// B = Σ s L_pq (L_pp − L_qq).
 func bestAngle(factors []*mat.Dense, sign []float64, p, q int) float64 {
 	a, b := 0.0, 0.0
 	for g, l := range factors {

@@ -167,7 +167,8 @@ type found struct {
 	mode       float64 // lowest eigenvalue of the Hessian
 }
 
-// sameEnergy is the difference below which two solutions count as one.
+// sameEnergy is the difference in hartree below which two solutions count as one;
+// the earlier is kept.
 const sameEnergy = 1e-9
 
 func (s *search) run() error {
@@ -221,7 +222,7 @@ func (s *search) try(c [2]*mat.Dense) error {
 				continue
 			}
 		}
-		if s.best == nil || pt.energy < s.best.pt.energy-sameEnergy*max(1, math.Abs(pt.energy)*1e-2) {
+		if s.best == nil || pt.energy < s.best.pt.energy-sameEnergy {
 			s.best = &found{pt, iterations, norm, mode}
 		}
 		return nil

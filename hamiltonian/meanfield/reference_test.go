@@ -12,7 +12,7 @@ import (
 
 func readIntegrals(t testing.TB, name string) *hamiltonian.Hamiltonian {
 	t.Helper()
-	file, err := os.Open(filepath.Join("testdata", name))
+	file, err := os.Open(filepath.Join("..", "..", "testdata", "integrals", name))
 	if err != nil {
 		t.Fatal(err)
 	}
