@@ -13,18 +13,16 @@ import (
 	"runtime"
 	"sync"
 	"sync/atomic"
+
+	"leadline/hamiltonian/strings"
 )
 
 // Estimate is the amplitudes of a ket on the determinants of a sector,
 // up strings × down strings, row-major, creation operators ordered up before
 // down and ascending from left to right. It is not safe for concurrent use.
 type Estimate struct {
-	// Orbitals is the number of measured spatial orbitals; Up and Down count
-	// the electrons on them.
-	Orbitals, Up, Down int
-	// UpStrings and DownStrings are the occupations, bit p for orbital p,
-	// ascending.
-	UpStrings, DownStrings []uint64
+	// Up and Down are the strings of each spin on the measured orbitals.
+	Up, Down *strings.Table
 	// Batches holds the mean of each batch and Weights its number of shots.
 	Batches [][]complex128
 	Weights []float64
@@ -69,7 +67,7 @@ type Step struct {
 type Figure struct{ Value, Error float64 }
 
 // Size returns the number of determinants.
-func (e *Estimate) Size() int { return len(e.UpStrings) * len(e.DownStrings) }
+func (e *Estimate) Size() int { return e.Up.Len() * e.Down.Len() }
 
 // total returns Σ_b w_b c_b and Σ_b w_b.
 func (e *Estimate) total() ([]complex128, float64) {

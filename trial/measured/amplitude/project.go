@@ -65,8 +65,8 @@ func (e *Estimate) Real() Step {
 // states with known zeros.
 func (e *Estimate) Keep(name string, allowed func(up, down uint64) bool) Step {
 	mask := make([]bool, 0, e.Size())
-	for _, u := range e.UpStrings {
-		for _, d := range e.DownStrings {
+	for _, u := range e.Up.Masks() {
+		for _, d := range e.Down.Masks() {
 			mask = append(mask, allowed(u, d))
 		}
 	}
@@ -85,7 +85,7 @@ func (e *Estimate) Keep(name string, allowed func(up, down uint64) bool) Step {
 // numbered so that the product is the bitwise exclusive or, one number per
 // orbital.
 func (e *Estimate) KeepIrrep(orbitals []int, state int) Step {
-	if len(orbitals) != e.Orbitals {
+	if len(orbitals) != e.Up.Orbitals() {
 		panic("amplitude: one irrep per orbital expected")
 	}
 	product := func(s uint64) (irrep int) {

@@ -4,16 +4,18 @@ import (
 	"fmt"
 	"math"
 	"math/bits"
+
+	"leadline/hamiltonian/strings"
 )
 
 // Spin keeps the part of total spin S, twoS = 2S, by Löwdin's product of
 // (S² − S'(S'+1))/(S(S+1) − S'(S'+1)) over the other spins S' of the sector
 // (Phys. Rev. 97, 1509 (1955)).
 func (e *Estimate) Spin(twoS int) (Step, error) {
-	low, high := spins(e.Orbitals, e.Up, e.Down)
+	low, high := spins(e.Up.Orbitals(), e.Up.Electrons(), e.Down.Electrons())
 	if twoS < low || twoS > high || (twoS-low)%2 != 0 {
 		return Step{}, fmt.Errorf("total spin %g is not in the sector of %d up and %d down electrons in %d orbitals: expected %g to %g",
-			float64(twoS)/2, e.Up, e.Down, e.Orbitals, float64(low)/2, float64(high)/2)
+			float64(twoS)/2, e.Up.Electrons(), e.Down.Electrons(), e.Up.Orbitals(), float64(low)/2, float64(high)/2)
 	}
 	s2 := newSpinSquared(e)
 	own := float64(twoS) * float64(twoS+2) / 4
@@ -70,36 +72,17 @@ func choose(n, k int) float64 {
 type spinSquared struct {
 	up, down []uint64
 	constant float64
-	// moves[spin][p·M+q] lists the strings in which one electron can go from
-	// orbital q to p.
-	moves [2][][]move
-}
-
-type move struct {
-	from, to int32
-	sign     float64
+	// moves holds, for each p ≠ q, a†_p↑ a_q↑ and a†_q↓ a_p↓.
+	moves [][2]*strings.Moves
 }
 
 func newSpinSquared(e *Estimate) *spinSquared {
-	z := float64(e.Up-e.Down) / 2
-	s := &spinSquared{up: e.UpStrings, down: e.DownStrings, constant: z * (z + 1)}
-	m := e.Orbitals
-	for spin, list := range [2][]uint64{e.UpStrings, e.DownStrings} {
-		place := make(map[uint64]int32, len(list))
-		for i, v := range list {
-			place[v] = int32(i)
-		}
-		s.moves[spin] = make([][]move, m*m)
-		for p := range m {
-			for q := range m {
-				for i, v := range list {
-					if p == q || v>>q&1 == 0 || v>>p&1 != 0 {
-						continue
-					}
-					between := uint64(1)<<max(p, q) - uint64(2)<<min(p, q)
-					sign := 1 - 2*float64(bits.OnesCount64(v&between)&1)
-					s.moves[spin][p*m+q] = append(s.moves[spin][p*m+q], move{int32(i), place[v^1<<p^1<<q], sign})
-				}
+	z := float64(e.Up.Electrons()-e.Down.Electrons()) / 2
+	s := &spinSquared{up: e.Up.Masks(), down: e.Down.Masks(), constant: z * (z + 1)}
+	for p := range e.Up.Orbitals() {
+		for q := range e.Up.Orbitals() {
+			if p != q {
+				s.moves = append(s.moves, [2]*strings.Moves{e.Up.Single(p, q), e.Down.Single(q, p)})
 			}
 		}
 	}
@@ -114,14 +97,13 @@ func (s *spinSquared) apply(dst, src []complex128) {
 			dst[i*nb+j] = complex(s.constant+float64(bits.OnesCount64(d&^u)), 0) * src[i*nb+j]
 		}
 	}
-	m := int(math.Sqrt(float64(len(s.moves[0]))))
-	for p := range m {
-		for q := range m {
-			for _, a := range s.moves[0][p*m+q] {
-				to, from := dst[int(a.to)*nb:(int(a.to)+1)*nb], src[int(a.from)*nb:(int(a.from)+1)*nb]
-				for _, b := range s.moves[1][q*m+p] {
-					to[b.to] -= complex(a.sign*b.sign, 0) * from[b.from]
-				}
+	for _, pair := range s.moves {
+		a, b := pair[0], pair[1]
+		for k, from := range a.From {
+			row := src[int(from)*nb : (int(from)+1)*nb]
+			to := dst[int(a.To[k])*nb : (int(a.To[k])+1)*nb]
+			for l, j := range b.From {
+				to[b.To[l]] -= complex(a.Sign[k]*b.Sign[l], 0) * row[j]
 			}
 		}
 	}

@@ -6,6 +6,7 @@ import (
 	"math"
 	"sync"
 
+	"leadline/hamiltonian/strings"
 	"leadline/trial/measured/amplitude"
 	"leadline/trial/measured/calibrate"
 	"leadline/trial/measured/matchgate"
@@ -51,7 +52,7 @@ func Run(ctx context.Context, source record.Source, opt Options) (*amplitude.Est
 			h.Up, h.Down, h.Modes()/2, dim, batches, need/(1<<30), limit/(1<<30))
 	}
 	m := h.Modes() / 2
-	e := &amplitude.Estimate{Orbitals: m, Up: h.Up, Down: h.Down, UpStrings: Strings(m, h.Up), DownStrings: Strings(m, h.Down)}
+	e := &amplitude.Estimate{Up: strings.New(m, h.Up), Down: strings.New(m, h.Down)}
 	if h.Occupied != nil {
 		var ref [2]uint64
 		for p := range m {
@@ -61,7 +62,7 @@ func Run(ctx context.Context, source record.Source, opt Options) (*amplitude.Est
 		}
 		e.Reference = &ref
 	}
-	p, err := newPlan(&h, sectorTarget(&h, e.UpStrings, e.DownStrings), h.ReferenceMask(), &opt)
+	p, err := newPlan(&h, sectorTarget(&h, e.Up, e.Down), h.ReferenceMask(), &opt)
 	if err != nil {
 		return nil, err
 	}

@@ -2,9 +2,9 @@ package collapse
 
 import (
 	"fmt"
-	"math"
 	"math/bits"
 
+	"leadline/hamiltonian/strings"
 	"leadline/trial/measured/record"
 )
 
@@ -20,40 +20,15 @@ type target struct {
 	alpha uint64
 }
 
-// Dimension returns the number of determinants in the sector of a header,
-// Inf-safe for registers of any size.
+// Dimension returns the number of determinants in the sector of a header; it
+// does not overflow.
 func Dimension(h *record.Header) float64 {
 	m := h.Modes() / 2
-	return binomial(m, h.Up) * binomial(m, h.Down)
-}
-
-func binomial(n, k int) float64 {
-	b := 1.0
-	for i := range min(k, n-k) {
-		b = math.Round(b * float64(n-i) / float64(i+1))
-	}
-	return b
-}
-
-// Strings returns the masks of electrons among orbitals, ascending.
-func Strings(orbitals, electrons int) []uint64 {
-	list := make([]uint64, 0, int(binomial(orbitals, electrons)))
-	if electrons == 0 {
-		return append(list, 0)
-	}
-	limit := uint64(1) << orbitals
-	for s := uint64(1)<<electrons - 1; s < limit; {
-		list = append(list, s)
-		// The next word with as many bits: carry the lowest run upwards.
-		low := s & -s
-		ripple := s + low
-		s = ripple | (s^ripple)>>2/low
-	}
-	return list
+	return float64(strings.Count(m, h.Up)) * float64(strings.Count(m, h.Down))
 }
 
 // sectorTarget lists the determinants of (N_up, N_down).
-func sectorTarget(h *record.Header, up, down []uint64) target {
+func sectorTarget(h *record.Header, up, down *strings.Table) target {
 	t := target{rowModes: h.AncillaMask()}
 	m := h.Modes() / 2
 	place := func(s uint64, spin int) (mask uint64) {
@@ -67,10 +42,10 @@ func sectorTarget(h *record.Header, up, down []uint64) target {
 	if h.Order == record.Interleaved {
 		t.alpha = alpha
 	}
-	for _, s := range up {
+	for _, s := range up.Masks() {
 		t.rows = append(t.rows, place(s, 0)|h.AncillaMask())
 	}
-	for _, s := range down {
+	for _, s := range down.Masks() {
 		t.cols = append(t.cols, place(s, 1))
 	}
 	return t

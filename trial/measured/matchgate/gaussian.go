@@ -4,6 +4,8 @@ import (
 	"math"
 	"math/bits"
 	"math/cmplx"
+
+	"leadline/hamiltonian/linalg"
 )
 
 // radius of the circle on which the generating polynomials are evaluated. The
@@ -30,11 +32,14 @@ type Gaussian struct {
 	nodes   []complex128
 	weights []complex128
 
-	contraction []complex128 // n×n, K_z
-	left        []complex128 // n×n
-	pfaffian    []complex128
-	kv          []complex128
-	work        []complex128
+	k          [2][]float64 // planes of K_z, n×n
+	right      [2][]float64 // planes of zB
+	left       []float64    // (1+z²)1 + zA, two planes in one block
+	pfaffian   [2][]float64
+	kv, vkv    [2][]float64
+	log        [1]float64
+	phase      [1]complex128
+	contracted []complex128
 }
 
 // NewGaussian returns an evaluator for n modes and the inverse channel g.
@@ -42,8 +47,11 @@ func NewGaussian(n int, g []float64) *Gaussian {
 	if len(g) != n+1 {
 		panic("matchgate: inverse channel needs n+1 entries")
 	}
-	e := &Gaussian{n: n, c: make([]float64, 4*n*n), contraction: make([]complex128, n*n), left: make([]complex128, n*n),
-		pfaffian: make([]complex128, 4*n*n), kv: make([]complex128, n*n), work: make([]complex128, 4*n*n)}
+	e := &Gaussian{n: n, c: make([]float64, 4*n*n), left: make([]float64, 2*n*n), contracted: make([]complex128, n*n)}
+	for part := range 2 {
+		e.k[part], e.right[part] = make([]float64, n*n), make([]float64, n*n)
+		e.pfaffian[part] = make([]float64, 4*n*n)
+	}
 	for j := range n + 1 {
 		z := cmplx.Rect(radius, 2*math.Pi*float64(j)/float64(n+1))
 		var w complex128
@@ -117,81 +125,108 @@ func (e *Gaussian) at(z complex128) complex128 {
 		for j := range n {
 			ee, eo := e.c[2*i*m+2*j], e.c[2*i*m+2*j+1]
 			oe, oo := e.c[(2*i+1)*m+2*j], e.c[(2*i+1)*m+2*j+1]
-			e.left[i*n+j] = z * complex(eo-oe, -ee-oo)
-			e.contraction[i*n+j] = -z * complex(-eo-oe, oo-ee)
+			l := z * complex(eo-oe, -ee-oo)
+			if i == j {
+				l += 1 + z*z
+			}
+			r := z * complex(-eo-oe, oo-ee)
+			e.left[i*n+j], e.left[n*n+i*n+j] = real(l), imag(l)
+			e.right[0][i*n+j], e.right[1][i*n+j] = real(r), imag(r)
 		}
-		e.left[i*n+i] += 1 + z*z
 	}
-	if !solve(e.left, n, e.contraction, n) {
-		return 0 // cannot happen inside the unit circle
-	}
-	for i := range m {
-		for j := range m {
-			e.work[i*m+j] = z * complex(e.c[i*m+j], 0)
-		}
+	linalg.InvertBatch(n, 1, e.left, e.log[:], e.phase[:]) // regular inside the unit circle
+	multiply(n, n, n, -1, [2][]float64{e.left[:n*n], e.left[n*n:]}, n, e.right, n, e.k, n)
+	re, im := e.pfaffian[0][:m*m], e.pfaffian[1][:m*m]
+	for i, v := range e.c {
+		re[i], im[i] = real(z)*v, imag(z)*v
 	}
 	for p := range n {
-		e.work[2*p*m+2*p+1]++
-		e.work[(2*p+1)*m+2*p]--
+		re[2*p*m+2*p+1]++
+		re[(2*p+1)*m+2*p]--
 	}
-	return Pfaffian(e.work, m) * complex(math.Ldexp(1, -n), 0)
+	log, phase := linalg.Pfaffian(m, re, im)
+	return complex(math.Exp(log-float64(n)*math.Ln2), 0) * phase
 }
 
-// Overlap returns Σ_k g_k [z^k] <r|G_z|φ> for the walker v (n×electrons,
-// row-major, columns left to right): the estimate of <r|ρ|φ>. r must be the
-// determinant that the snapshot was set with. O(n³ + n·electrons·n) per node.
-func (e *Gaussian) Overlap(r uint64, v []complex128, electrons int) complex128 {
+// multiply sets C = scale·A·B for matrices in planes, A m×k, B k×n.
+func multiply(m, n, k int, scale float64, a [2][]float64, lda int, b [2][]float64, ldb int, c [2][]float64, ldc int) {
+	linalg.Gemm(false, false, m, n, k, scale, a[0], lda, b[0], ldb, 0, c[0], ldc)
+	linalg.Gemm(false, false, m, n, k, -scale, a[1], lda, b[1], ldb, 1, c[0], ldc)
+	linalg.Gemm(false, false, m, n, k, scale, a[0], lda, b[1], ldb, 0, c[1], ldc)
+	linalg.Gemm(false, false, m, n, k, scale, a[1], lda, b[0], ldb, 1, c[1], ldc)
+}
+
+// Overlaps adds to dst[w] the estimate Σ_k g_k [z^k] <r|G_z|φ_w> of <r|ρ|φ_w> for
+// len(dst) walkers of so many electrons. v holds the planes of their columns, n
+// rows by walkers·electrons columns, the columns of a walker next to each
+// other, left to right. r must be the determinant that the snapshot was set
+// with. Per node, O(n³) for the snapshot and O(n²·electrons + (|r|+electrons)³)
+// for each walker.
+func (e *Gaussian) Overlaps(dst []complex128, r uint64, v [2][]float64, electrons int) {
 	n := e.n
-	size := bits.OnesCount64(r) + electrons
-	if len(v) != n*electrons {
-		panic("matchgate: walker has the wrong shape")
+	columns := len(dst) * electrons
+	if len(v[0]) != n*columns || len(v[1]) != n*columns {
+		panic("matchgate: walkers have the wrong shape")
 	}
-	if cap(e.pfaffian) < size*size {
-		e.pfaffian = make([]complex128, size*size)
+	occupied := bits.OnesCount64(r)
+	size := occupied + electrons
+	for part := range 2 {
+		e.pfaffian[part] = grow(e.pfaffian[part], max(4*n*n, size*size))
+		e.kv[part] = grow(e.kv[part], n*columns)
+		e.vkv[part] = grow(e.vkv[part], electrons*electrons)
 	}
-	pf := e.pfaffian[:size*size]
-	if cap(e.kv) < n*electrons {
-		e.kv = make([]complex128, n*electrons)
-	}
-	kv := e.kv[:n*electrons]
-	var rows []int // of r, descending: <r| = <0|g…g
+	var rows [64]int // of r, descending: <r| = <0|g…g
+	at := 0
 	for p := n - 1; p >= 0; p-- {
 		if r>>p&1 != 0 {
-			rows = append(rows, p)
+			rows[at] = p
+			at++
 		}
 	}
-	var sum complex128
 	for node, z := range e.nodes {
-		h := e.at(z)
-		for i := range n {
-			for k := range electrons {
-				var s complex128
-				for j := range n {
-					s += e.contraction[i*n+j] * v[j*electrons+k]
+		factor := e.weights[node] * e.at(z)
+		multiply(n, columns, n, 1, e.k, n, v, columns, e.kv, columns)
+		for w := range dst {
+			e.transposed(v, w*electrons, electrons, columns)
+			for part := range 2 {
+				pf := e.pfaffian[part][:size*size]
+				for a, p := range rows[:occupied] {
+					for b := a + 1; b < occupied; b++ {
+						pf[a*size+b] = e.k[part][p*n+rows[b]]
+					}
+					for k := range electrons {
+						col := p*columns + w*electrons + k
+						pf[a*size+occupied+k] = v[part][col] + e.kv[part][col]
+					}
 				}
-				kv[i*electrons+k] = s
-			}
-		}
-		for a, p := range rows {
-			for b := a + 1; b < len(rows); b++ {
-				pf[a*size+b] = e.contraction[p*n+rows[b]]
-			}
-			for k := range electrons {
-				pf[a*size+len(rows)+k] = v[p*electrons+k] + kv[p*electrons+k]
-			}
-		}
-		for k := range electrons {
-			for l := k + 1; l < electrons; l++ {
-				var s complex128
-				for i := range n {
-					s += v[i*electrons+k] * kv[i*electrons+l]
+				for k := range electrons {
+					copy(pf[(occupied+k)*size+occupied:][:electrons], e.vkv[part][k*electrons:])
 				}
-				pf[(len(rows)+k)*size+len(rows)+l] = s
+			}
+			log, phase := linalg.Pfaffian(size, e.pfaffian[0][:size*size], e.pfaffian[1][:size*size])
+			if !math.IsInf(log, -1) {
+				dst[w] += factor * complex(math.Exp(log), 0) * phase
 			}
 		}
-		sum += e.weights[node] * h * Pfaffian(pf, size)
 	}
-	return sum
+}
+
+// transposed sets vkv = VᵀKV for the columns of one walker.
+func (e *Gaussian) transposed(v [2][]float64, first, electrons, columns int) {
+	product := func(a, b []float64, scale, keep float64, c []float64) {
+		linalg.Gemm(true, false, electrons, electrons, e.n, scale, a[first:], columns, b[first:], columns, keep, c, electrons)
+	}
+	product(v[0], e.kv[0], 1, 0, e.vkv[0])
+	product(v[1], e.kv[1], -1, 1, e.vkv[0])
+	product(v[0], e.kv[1], 1, 0, e.vkv[1])
+	product(v[1], e.kv[0], 1, 1, e.vkv[1])
+}
+
+func grow(s []float64, n int) []float64 {
+	if cap(s) < n {
+		return make([]float64, n)
+	}
+	return s[:n]
 }
 
 // Determinants adds to values[i] the estimate Σ_k g_k [z^k] <r|G_z|D_i> of the
@@ -206,13 +241,16 @@ func (e *Gaussian) Determinants(values []complex128, dets []uint64, r uint64, mo
 	table[0] = 1
 	for node, z := range e.nodes {
 		w := e.weights[node] * e.at(z)
+		for i, v := range e.k[0] {
+			e.contracted[i] = complex(v, e.k[1][i])
+		}
 		for set := uint64(3); set < 1<<n; set++ {
 			if c := bits.OnesCount64(set); c&1 != 0 || c > most {
 				continue
 			}
 			first := bits.TrailingZeros64(set)
 			rest := set & (set - 1)
-			row := e.contraction[first*n : (first+1)*n]
+			row := e.contracted[first*n : (first+1)*n]
 			var s complex128
 			plus := true
 			for left := rest; left != 0; left &= left - 1 {
@@ -250,8 +288,9 @@ func (e *Gaussian) Polynomial() []float64 {
 // ParityOdd reports whether the parity of the snapshot, Pf C = det Q Π(−1)^b, is
 // not that of the row's determinant: a noiseless state never yields that.
 func (e *Gaussian) ParityOdd() bool {
-	for i, v := range e.c {
-		e.work[i] = complex(v, 0)
-	}
-	return real(Pfaffian(e.work, 2*e.n)) < 0
+	size := 4 * e.n * e.n
+	copy(e.pfaffian[0], e.c)
+	clear(e.pfaffian[1][:size])
+	_, phase := linalg.Pfaffian(2*e.n, e.pfaffian[0][:size], e.pfaffian[1][:size])
+	return real(phase) < 0
 }

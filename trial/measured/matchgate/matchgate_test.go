@@ -278,24 +278,36 @@ func TestOverlapIsTheSumOverDeterminants(t *testing.T) {
 	}{{2, 0}, {4, 0}, {1, 0b00100}, {2, 0b10010}, {3, 0b01011}, {2, 0b11110}} {
 		q := Rotation(nil, n, rng)
 		outcome := rng.Uint64() & (1<<n - 1)
-		v := make([]complex128, n*c.electrons)
-		for i := range v {
-			v[i] = complex(rng.NormFloat64(), rng.NormFloat64())
+		const walkers = 3
+		all := [2][]float64{make([]float64, walkers*n*c.electrons), make([]float64, walkers*n*c.electrons)}
+		for i := range all[0] {
+			all[0][i], all[1][i] = rng.NormFloat64(), rng.NormFloat64()
 		}
 		e.SetOrthogonal(q, outcome, c.r)
-		got := e.Overlap(c.r, v, c.electrons)
+		overlaps := make([]complex128, walkers)
+		e.Overlaps(overlaps, c.r, all, c.electrons)
 		dets := determinants(n, c.electrons)
 		values := make([]complex128, len(dets))
 		e.Determinants(values, dets, c.r, n, nil)
-		var want complex128
-		for i, d := range dets {
-			if RowSign(d, c.r) {
-				values[i] = -values[i]
+		for w, got := range overlaps {
+			v := make([]complex128, n*c.electrons)
+			for i := range n {
+				for k := range c.electrons {
+					at := (i*walkers+w)*c.electrons + k
+					v[i*c.electrons+k] = complex(all[0][at], all[1][at])
+				}
 			}
-			want += values[i] * minor(v, c.electrons, d)
-		}
-		if cmplx.Abs(got-want) > 1e-11 {
-			t.Errorf("%+v: overlap %v, sum over determinants %v", c, got, want)
+			var want complex128
+			for i, d := range dets {
+				value := values[i] * minor(v, c.electrons, d)
+				if RowSign(d, c.r) {
+					value = -value
+				}
+				want += value
+			}
+			if cmplx.Abs(got-want) > 1e-11 {
+				t.Errorf("%+v: overlap %v, sum over determinants %v", c, got, want)
+			}
 		}
 	}
 }
@@ -323,44 +335,4 @@ func minor(v []complex128, electrons int, det uint64) complex128 {
 		return s
 	}
 	return expand(rows, 0)
-}
-
-func TestPfaffianAgainstExpansion(t *testing.T) {
-	rng := rand.New(rand.NewPCG(2, 2))
-	for _, n := range []int{2, 4, 6, 8} {
-		a := make([]complex128, n*n)
-		for i := range n {
-			for j := range i {
-				a[j*n+i] = complex(rng.NormFloat64(), rng.NormFloat64())
-				if rng.IntN(3) == 0 {
-					a[j*n+i] = 0 // pivoting must happen
-				}
-				a[i*n+j] = -a[j*n+i]
-			}
-		}
-		var expand func(list []int) complex128
-		expand = func(list []int) complex128 {
-			if len(list) == 0 {
-				return 1
-			}
-			var s complex128
-			for i := 1; i < len(list); i++ {
-				rest := append(slices.Clone(list[1:i]), list[i+1:]...)
-				term := a[list[0]*n+list[i]] * expand(rest)
-				if i%2 == 0 {
-					term = -term
-				}
-				s += term
-			}
-			return s
-		}
-		list := make([]int, n)
-		for i := range list {
-			list[i] = i
-		}
-		want := expand(list)
-		if got := Pfaffian(slices.Clone(a), n); cmplx.Abs(got-want) > 1e-12*(1+cmplx.Abs(want)) {
-			t.Errorf("n=%d: %v, want %v", n, got, want)
-		}
-	}
 }

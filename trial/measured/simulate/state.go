@@ -11,7 +11,7 @@ import (
 	"math/bits"
 	"slices"
 
-	"leadline/trial/measured/collapse"
+	"leadline/hamiltonian/strings"
 	"leadline/trial/measured/record"
 )
 
@@ -19,7 +19,7 @@ import (
 const MaxQubits = 16
 
 // State is a trial state on m measured orbitals: amplitudes of the ket on up
-// strings × down strings, row-major, both lists as collapse.Strings gives them.
+// strings × down strings, row-major, both lists as package hamiltonian/strings orders them.
 // It need not be normalised.
 type State struct {
 	Orbitals, Up, Down int
@@ -134,7 +134,7 @@ func components(st *State, h *record.Header) ([]component, error) {
 	if h.Kind == record.Calibration {
 		return []component{{0, 1}}, nil
 	}
-	up, down := collapse.Strings(st.Orbitals, st.Up), collapse.Strings(st.Orbitals, st.Down)
+	up, down := strings.New(st.Orbitals, st.Up).Masks(), strings.New(st.Orbitals, st.Down).Masks()
 	if len(st.Amplitudes) != len(up)*len(down) {
 		return nil, fmt.Errorf("state has %d amplitudes, its sector %d determinants", len(st.Amplitudes), len(up)*len(down))
 	}
