@@ -13,7 +13,16 @@
 //
 // The product of the Hamiltonian with a state is written as matrix products
 // over gathered rows (in the spirit of Knowles & Handy, Chem. Phys. Lett. 111,
-// 315 (1984) and Olsen et al., J. Chem. Phys. 89, 2185 (1988)); eigenstates
-// come from the block method of Davidson, J. Comput. Phys. 17, 87 (1975), with
-// restarts.
+// 315 (1984) and Olsen et al., J. Chem. Phys. 89, 2185 (1988)). With n electrons
+// of a spin in M orbitals and S strings it takes, for a dense two-body part,
+//
+//	like spins:   2·S_other · (M over n−2) · (M−n+2 over 2)²     flops, for each spin
+//	unlike spins: 2·S_up·S_down · M(M+1)/2 · (n_up(M−n_up) + 1)  flops
+//
+// which is 6.4 Gflop for 12 electrons in 12 orbitals (853,776 determinants).
+// Antisymmetric factors double the second line, nearly; lattice
+// models in their site basis need next to nothing of it. Eigenstates come from
+// the block method of Davidson, J. Comput. Phys. 17, 87 (1975), with restarts and
+// a test that no lower state of another symmetry was missed; a ground state takes
+// 30 to 100 products, the test included.
 package exact

@@ -31,7 +31,11 @@ type like struct {
 func newLike(table *strings.Table, one *mat.SymDense, two *tensor) *like {
 	m, n := table.Orbitals(), table.Electrons()
 	l := &like{table: table, diagonal: make([]float64, table.Len())}
-	g, largest := two.exchanged(m)
+	var g []float64
+	var largest float64
+	if n > 1 {
+		g, largest = two.exchanged(m)
+	}
 	for i := range l.diagonal {
 		occupied := table.Occupied(nil, i)
 		for k, p := range occupied {

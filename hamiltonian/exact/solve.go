@@ -81,8 +81,9 @@ func (e *NotConvergedError) Error() string {
 }
 
 // Solve finds the lowest eigenstates of h. The result is the same on any number
-// of processors. States whose energies agree to 1e-8 are rotated among each other
-// to make S² diagonal, where h commutes with it.
+// of processors. Where h commutes with S², states of one energy (to a tenth of the
+// tolerance) are rotated among each other to make it diagonal; only a degenerate
+// group that the number of states cuts in two may be left without definite spin.
 //
 // Errors: h not valid; options that cannot be met; *TooLargeError; the error of
 // ctx, looked at between products with H; *NotConvergedError, with the result so
