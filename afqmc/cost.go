@@ -7,8 +7,8 @@ import (
 
 // Cost is what a projection will take.
 type Cost struct {
-	// Bytes of memory in the walk: walkers, constant operands and work areas. The
-	// trial's tables for the local energy come on top, at most ExchangeMemory.
+	// Bytes of memory in the walk: walkers, constant operands, work areas and the
+	// tables of a single determinant for the local energy.
 	Bytes int64
 	// Flops of the whole run, local energies of a single determinant included.
 	Flops float64
@@ -58,6 +58,10 @@ func EstimateCost(h *hamiltonian.Hamiltonian, support trial.Support, paired bool
 
 	tile := min(walkers, tileSize)
 	area := 2*tile*pairs + 2*tile*ng + 2*m*m + 4*m*columns*tile + 2*tile*(rotated+summed)
-	c.Bytes = int64(8 * (walkers*(2*m*columns+2*ng) + spins*2*ng*pairs + ng*summed + float64(o.Cores)*area))
+	tables := rotated * rotated / 2
+	if 8*tables > ExchangeMemory {
+		tables = ng * summed
+	}
+	c.Bytes = int64(8 * (walkers*(2*m*columns+2*ng) + spins*2*ng*pairs + ng*summed + tables + float64(o.Cores)*area))
 	return c
 }

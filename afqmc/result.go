@@ -99,8 +99,8 @@ func (s *samples) reached(target float64) bool {
 const targetEvery = 20
 
 // trim returns how many rows at the start are still drifting: what the
-// truncation rule proposes, if it differs from the rest by more than three
-// combined standard errors.
+// truncation rule proposes, if it differs from the rest by more than four
+// combined standard errors (the rule picks the worst of many places).
 func (s *samples) trim() int {
 	n := len(s.weight)
 	energies := make([]float64, n)
@@ -116,7 +116,7 @@ func (s *samples) trim() int {
 	// The head's error is taken from the tail's fluctuations: its own drift
 	// would widen it.
 	spread := tail.Error * math.Sqrt(1+float64(n-d)/float64(d))
-	if math.Abs(head.Mean-tail.Mean) > 3*spread {
+	if math.Abs(head.Mean-tail.Mean) > 4*spread {
 		return d
 	}
 	return 0

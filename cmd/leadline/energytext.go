@@ -17,7 +17,7 @@ func quoted(value, err float64) string {
 	}
 	digits := -int(math.Floor(math.Log10(err)))
 	last := math.Round(err * math.Pow(10, float64(digits)))
-	if last == 1 || last == 10 {
+	if last == 1 {
 		digits++
 		last = math.Round(err * math.Pow(10, float64(digits)))
 	}

@@ -18,6 +18,9 @@ type exactResult struct {
 	States       []exactState `json:"states"`
 	Determinants int          `json:"determinants"`
 	Unit         string       `json:"unit"`
+
+	ground *exact.State
+	space  *exact.Space
 }
 
 type exactState struct {
@@ -107,7 +110,18 @@ func (s *system) exact(ctx context.Context, states int, spin *float64, shown dis
 		out.States = append(out.States, exactState{state.Energy, state.SpinSquared})
 	}
 	out.ExactEnergy = out.States[0].Energy
+	out.ground, out.space = &result.States[0], result.Space
 	return out, nil
+}
+
+// keptSpin returns the total spin that the projection keeps, nil where the
+// Hamiltonian does not conserve spin.
+func (s *system) keptSpin() *float64 {
+	if !exact.CommutesWithSpin(s.hamiltonian) {
+		return nil
+	}
+	spin := s.spin()
+	return &spin
 }
 
 func (r *exactResult) print(w io.Writer, title string) error {

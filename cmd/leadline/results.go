@@ -25,33 +25,33 @@ const (
 // summary is the content of summary.json and of --json; null where a thing was
 // not computed.
 type summary struct {
-	Title             string            `json:"title"`
-	Status            afqmc.Status      `json:"status"`
-	Energy            *float64          `json:"energy"`
-	Error             *float64          `json:"error"`
-	Unit              string            `json:"unit"`
-	MeanFieldEnergy   *float64          `json:"mean_field_energy"`
-	TrialEnergy       *float64          `json:"trial_energy"`
-	TrialSpinSquared  *float64          `json:"trial_spin_squared"`
-	ExactEnergy       *float64          `json:"exact_energy"`
-	ConstantEnergy    float64           `json:"constant_energy"`
-	Orbitals          int               `json:"orbitals"`
-	Up                int               `json:"up"`
-	Down              int               `json:"down"`
-	Factors           int               `json:"factors"`
-	FactorResidual    float64           `json:"factor_residual"`
-	Walkers           int               `json:"walkers"`
-	TimeStep          float64           `json:"time_step"`
-	ImaginaryTime     float64           `json:"imaginary_time"`
-	AutocorrelationTm *float64          `json:"autocorrelation_time"`
-	Seed              int64             `json:"seed"`
-	Kernel            string            `json:"kernel"`
-	Inputs            map[string]string `json:"inputs"`
-	Warnings          []afqmc.Warning   `json:"warnings"`
-	Figures           *afqmc.Figures    `json:"figures"`
-	Failure           string            `json:"failure,omitempty"`
-	WallSeconds       float64           `json:"wall_seconds"`
-	Version           string            `json:"version"`
+	Title             string              `json:"title"`
+	Status            afqmc.Status        `json:"status"`
+	Energy            *float64            `json:"energy"`
+	Error             *float64            `json:"error"`
+	Unit              string              `json:"unit"`
+	MeanFieldEnergy   *float64            `json:"mean_field_energy"`
+	TrialEnergy       *float64            `json:"trial_energy"`
+	TrialSpinSquared  *float64            `json:"trial_spin_squared"`
+	ExactEnergy       *float64            `json:"exact_energy"`
+	ConstantEnergy    float64             `json:"constant_energy"`
+	Orbitals          int                 `json:"orbitals"`
+	Up                int                 `json:"up"`
+	Down              int                 `json:"down"`
+	Factors           int                 `json:"factors"`
+	FactorResidual    float64             `json:"factor_residual"`
+	Walkers           int                 `json:"walkers"`
+	TimeStep          float64             `json:"time_step"`
+	ImaginaryTime     float64             `json:"imaginary_time"`
+	AutocorrelationTm *float64            `json:"autocorrelation_time"`
+	Seed              int64               `json:"seed"`
+	Kernel            string              `json:"kernel"`
+	Inputs            map[string]string   `json:"inputs"`
+	Warnings          []afqmc.Warning     `json:"warnings"`
+	Figures           map[string]*float64 `json:"figures"`
+	Failure           string              `json:"failure,omitempty"`
+	WallSeconds       float64             `json:"wall_seconds"`
+	Version           string              `json:"version"`
 }
 
 // number returns a pointer to v, nil where it is not finite.
@@ -60,6 +60,25 @@ func number(v float64) *float64 {
 		return nil
 	}
 	return &v
+}
+
+// figuresOf returns the numbers behind the diagnostics by name.
+func figuresOf(f afqmc.Figures) map[string]*float64 {
+	return map[string]*float64{
+		"stored_overlap":    number(f.OverlapDeviation),
+		"capped_steps":      number(f.Capped),
+		"force_bias":        number(f.Bounded),
+		"killed_walkers":    number(f.Killed),
+		"effective_walkers": number(f.Efficiency),
+		"phase_diffusion":   number(f.PhaseDiffusion),
+		"energy_deviation":  number(f.Local.Deviation),
+		"energy_spread":     number(f.Local.Ratio),
+		"energy_tail":       number(f.Local.Hill),
+		"largest_energy":    number(f.Local.Largest),
+		"drift":             number(f.Drift),
+		"imaginary_energy":  number(f.Imaginary),
+		"growth_energy":     number(f.Growth),
+	}
 }
 
 // worst returns the highest level among the warnings.
@@ -81,7 +100,7 @@ func worst(warnings []afqmc.Warning) afqmc.Level {
 // explicit one that holds results is refused unless they may be overwritten.
 func resultDirectory(explicit, jobName string, overwrite bool) (string, error) {
 	if explicit == "" {
-		base := strings.TrimSuffix(filepath.Base(jobName), filepath.Ext(jobName))
+		base := baseName(jobName)
 		for n := 1; ; n++ {
 			name := base + ".results"
 			if n > 1 {
@@ -106,6 +125,11 @@ func resultDirectory(explicit, jobName string, overwrite bool) (string, error) {
 		}
 	}
 	return explicit, os.MkdirAll(explicit, 0o755)
+}
+
+// baseName returns the name of a file without directory and extension.
+func baseName(name string) string {
+	return strings.TrimSuffix(filepath.Base(name), filepath.Ext(name))
 }
 
 // series writes series.csv row by row; it implements afqmc.Recorder.
@@ -144,9 +168,46 @@ func (s *series) close() error {
 }
 
 // writeJob writes the job as resolved, with names of files that lead to them
-// from the result directory.
-func writeJob(dir string, j *job.Job) error {
-	return writeFile(filepath.Join(dir, jobFile), j.Write)
+// from the result directory; the embedded example's own files are copied there.
+func writeJob(dir string, in *inputs, j *job.Job) error {
+	var moved []job.Setting
+	for _, file := range j.Files() {
+		name := file.Value.(string)
+		if in.inside != nil {
+			content, err := in.read(name)
+			if err != nil {
+				return err
+			}
+			err = writeFile(filepath.Join(dir, name), func(w io.Writer) error {
+				_, err := w.Write(content)
+				return err
+			})
+			if err != nil {
+				return err
+			}
+			continue
+		}
+		if filepath.IsAbs(name) {
+			continue
+		}
+		from, err := filepath.Abs(dir)
+		if err != nil {
+			return err
+		}
+		to, err := filepath.Abs(in.path(name))
+		if err != nil {
+			return err
+		}
+		if relative, err := filepath.Rel(from, to); err == nil {
+			to = filepath.ToSlash(relative)
+		}
+		moved = append(moved, job.Setting{Key: file.Key, Value: to})
+	}
+	there, err := j.With(moved...)
+	if err != nil {
+		return err
+	}
+	return writeFile(filepath.Join(dir, jobFile), there.Write)
 }
 
 func writeSummary(dir string, s *summary) error {

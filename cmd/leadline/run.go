@@ -14,7 +14,6 @@ import (
 
 	"leadline/afqmc"
 	"leadline/cmd/leadline/job"
-	"leadline/hamiltonian/exact"
 	"leadline/hamiltonian/linalg"
 )
 
@@ -64,7 +63,6 @@ func runCommand(stderr io.Writer) *cobra.Command {
 
 // runJob does one job and prints its result.
 func runJob(ctx context.Context, name string, f runFlags, seeded bool, stdout, stderr io.Writer) error {
-	begun := time.Now()
 	in, text, name, err := openJob(name)
 	if err != nil {
 		return err
@@ -78,100 +76,122 @@ func runJob(ctx context.Context, name string, f runFlags, seeded bool, stdout, s
 			return err
 		}
 	}
-	shown := display{out: stderr, quiet: f.quiet}
-	say := func(format string, args ...any) {
-		if !f.quiet {
-			fmt.Fprintf(stderr, format+"\n", args...)
-		}
-	}
-	say("%s", j.Title)
-	s, err := newSystem(ctx, j, in, shown.stage)
-	if err != nil {
-		return err
-	}
-	h := s.hamiltonian
-	say("%d orbitals, %d up and %d down electrons, %d factors (largest integral error %.1e), %d frozen orbitals",
-		h.Orbitals, h.Up, h.Down, h.Factors.Count(), s.residual, s.frozen)
-	g, err := newGuidance(ctx, j, in, s)
-	if err != nil {
-		return err
-	}
-	say("mean field (%s) %s %s; walkers start from %v with <S^2> = %.4g, kept by the projection", g.reference,
-		quoted(g.meanField, 0), symbol(s.unit), s.start.Kind, s.start.SpinSquared)
-	for _, note := range g.notes {
-		say("note: %s", note)
-	}
-	options := projection(j, f.cores)
-	cost := afqmc.EstimateCost(h, g.guide.Support(), h.SpinFree() && g.start.Equal(), options)
-	say("the walk: %s of memory, %.2g flops in %.2g walker-steps", bytesText(cost.Bytes+afqmc.ExchangeMemory), cost.Flops, float64(cost.Steps))
-	if err := checkMemory(cost.Bytes, "the walk"); err != nil {
-		return err
-	}
-
-	var reference *exactResult
-	if f.exact {
-		var spin *float64
-		if exact.CommutesWithSpin(h) {
-			kept := s.spin()
-			spin = &kept
-		}
-		if reference, err = s.exact(ctx, 1, spin, shown); err != nil {
+	if j.Title == "" {
+		if j, err = j.With(job.Setting{Key: "title", Value: baseName(name)}); err != nil {
 			return err
 		}
 	}
-
-	dir, err := resultDirectory(f.output, name, f.overwrite)
-	if err != nil {
+	r := &jobRun{in: in, job: j, flags: f, name: name, shown: display{out: stderr, quiet: f.quiet}}
+	if err := r.prepare(ctx); err != nil {
 		return err
 	}
-	if err := writeJob(dir, j); err != nil { // checks that the directory can be written, too
-		return err
-	}
-	total := options.Equilibration + options.Length
-	update := shown.open("projecting", int64(1000*total))
-	rows, err := newSeries(dir, func(r afqmc.Row) {
-		state := "equilibrating"
-		if r.Sampled {
-			state = fmt.Sprintf("energy %.4f", r.Energy)
-		}
-		update(int64(1000*r.Time), state)
-	})
-	if err != nil {
-		return err
-	}
-	result, err := afqmc.Run(ctx, g.guide, g.start, options, rows)
-	if closed := rows.close(); err == nil {
-		err = closed
-	}
-	out := s.summary(j, in, g)
-	out.WallSeconds = time.Since(begun).Seconds()
-	if err != nil {
-		out.Status, out.Failure = "failed", err.Error()
-		writeSummary(dir, out)
-		return err
-	}
-	out.add(result)
-	out.Warnings = slices.Concat([]afqmc.Warning{}, s.warnings, g.warnings, out.Warnings)
-	if reference != nil {
-		out.ExactEnergy = &reference.ExactEnergy
-	}
-	if err := writeSummary(dir, out); err != nil {
+	if err := r.project(ctx); err != nil {
 		return err
 	}
 	if f.json {
-		err = encode(stdout, out)
+		err = encode(stdout, r.summary)
 	} else {
-		err = out.print(stdout, s, g, dir)
+		err = r.print(stdout)
 	}
 	switch {
 	case err != nil:
 		return err
-	case result.Status == afqmc.StatusInterrupted:
+	case r.summary.Status == afqmc.StatusInterrupted:
 		return exitError{exitInterrupted}
-	case worst(out.Warnings) == afqmc.Stop:
+	case worst(r.summary.Warnings) == afqmc.Stop:
 		return exitError{exitDoubtful}
 	}
 	return nil
+}
+
+// jobRun is one job on its way from file to result.
+type jobRun struct {
+	in    *inputs
+	job   *job.Job
+	flags runFlags
+	name  string // of the job file
+	shown display
+
+	begun    time.Time
+	system   *system
+	guidance *guidance
+	exact    *exactResult
+	options  afqmc.Options
+	dir      string
+	summary  *summary
+}
+
+func (r *jobRun) say(format string, args ...any) {
+	if !r.flags.quiet {
+		fmt.Fprintf(r.shown.out, format+"\n", args...)
+	}
+}
+
+// prepare does all that comes before the walk.
+func (r *jobRun) prepare(ctx context.Context) (err error) {
+	r.begun = time.Now()
+	r.say("%s", r.job.Title)
+	if r.system, err = newSystem(ctx, r.job, r.in, r.shown.stage); err != nil {
+		return err
+	}
+	s, h := r.system, r.system.hamiltonian
+	r.say("%d orbitals, %d up and %d down electrons, %d factors (largest integral error %.1e), %d frozen orbitals",
+		h.Orbitals, h.Up, h.Down, h.Factors.Count(), s.residual, s.frozen)
+	if r.guidance, err = newGuidance(ctx, r.job, r.in, s); err != nil {
+		return err
+	}
+	g := r.guidance
+	r.say("mean field (%s) %s %s; walkers start from %v with <S^2> = %.4f, kept by the projection", g.reference,
+		quoted(g.meanField, 0), symbol(s.unit), s.start.Kind, s.start.SpinSquared)
+	for _, note := range g.notes {
+		r.say("note: %s", note)
+	}
+	r.options = projection(r.job, r.flags.cores)
+	cost := afqmc.EstimateCost(h, g.guide.Support(), h.SpinFree() && g.start.Equal(), r.options)
+	r.say("the walk: about %s of memory, %.2g flops in %.2g walker-steps", bytesText(cost.Bytes), cost.Flops, float64(cost.Steps))
+	if err := checkMemory(cost.Bytes, "the walk"); err != nil {
+		return err
+	}
+	if r.flags.exact {
+		r.exact, err = s.exact(ctx, 1, s.keptSpin(), r.shown)
+	}
+	return err
+}
+
+// project makes the result directory, runs the walk and writes what came out.
+func (r *jobRun) project(ctx context.Context) (err error) {
+	if r.dir, err = resultDirectory(r.flags.output, r.name, r.flags.overwrite); err != nil {
+		return err
+	}
+	if err := writeJob(r.dir, r.in, r.job); err != nil {
+		return err
+	}
+	total := r.options.Equilibration + r.options.Length
+	update := r.shown.open("projecting", int64(1000*total))
+	rows, err := newSeries(r.dir, func(row afqmc.Row) {
+		state := "equilibrating"
+		if row.Sampled {
+			state = fmt.Sprintf("energy %.4f", row.Energy)
+		}
+		update(int64(1000*row.Time), state)
+	})
+	if err != nil {
+		return err
+	}
+	result, err := afqmc.Run(ctx, r.guidance.guide, r.guidance.start, r.options, rows)
+	if closed := rows.close(); err == nil {
+		err = closed
+	}
+	out := r.known()
+	r.summary = out
+	if err != nil {
+		out.Status, out.Failure = "failed", err.Error()
+		writeSummary(r.dir, out)
+		return err
+	}
+	out.add(result)
+	out.Warnings = slices.Concat([]afqmc.Warning{}, r.system.warnings, r.guidance.warnings, out.Warnings)
+	return writeSummary(r.dir, out)
 }
 
 // projection returns the options of the walk.
@@ -195,8 +215,9 @@ func projection(j *job.Job, cores int) afqmc.Options {
 	return o
 }
 
-// summary returns what is known before the walk.
-func (s *system) summary(j *job.Job, in *inputs, g *guidance) *summary {
+// known returns the summary without the result of the walk.
+func (r *jobRun) known() *summary {
+	s, j, g := r.system, r.job, r.guidance
 	h := s.hamiltonian
 	out := &summary{
 		Title:           j.Title,
@@ -212,9 +233,13 @@ func (s *system) summary(j *job.Job, in *inputs, g *guidance) *summary {
 		TimeStep:        j.Projection.TimeStep,
 		Seed:            j.Projection.Seed,
 		Kernel:          linalg.Kernel(),
-		Inputs:          in.hashes,
+		Inputs:          r.in.hashes,
 		Warnings:        []afqmc.Warning{},
+		WallSeconds:     time.Since(r.begun).Seconds(),
 		Version:         version(),
+	}
+	if r.exact != nil {
+		out.ExactEnergy = &r.exact.ExactEnergy
 	}
 	if e, ok := g.guide.Expectations(); ok {
 		out.TrialEnergy, out.TrialSpinSquared = number(e.Energy(h)), number(e.SpinSquared())
@@ -231,12 +256,13 @@ func (out *summary) add(r *afqmc.Result) {
 	out.Energy, out.Error = number(r.Energy.Mean), number(r.Energy.Error)
 	out.ImaginaryTime = r.Time
 	out.AutocorrelationTm = number(r.Autocorrelation)
-	out.Figures = &r.Figures
+	out.Figures = figuresOf(r.Figures)
 }
 
 // print writes the result for a person, ready to quote.
-func (out *summary) print(w io.Writer, s *system, g *guidance, dir string) error {
+func (r *jobRun) print(w io.Writer) error {
 	var b strings.Builder
+	out, s := r.summary, r.system
 	unit := symbol(out.Unit)
 	fmt.Fprintf(&b, "%s\n\n", out.Title)
 	switch {
@@ -250,7 +276,7 @@ func (out *summary) print(w io.Writer, s *system, g *guidance, dir string) error
 		fmt.Fprintf(&b, "               population, bias of the phaseless constraint\n")
 	}
 	if out.MeanFieldEnergy != nil {
-		fmt.Fprintf(&b, "  mean field   %s %s (%s)\n", quoted(*out.MeanFieldEnergy, 0), unit, g.reference)
+		fmt.Fprintf(&b, "  mean field   %s %s (%s)\n", quoted(*out.MeanFieldEnergy, 0), unit, r.guidance.reference)
 	}
 	if out.TrialEnergy != nil {
 		fmt.Fprintf(&b, "  trial        %s %s, <S^2> = %.4f\n", quoted(*out.TrialEnergy, 0), unit, *out.TrialSpinSquared)
@@ -270,7 +296,7 @@ func (out *summary) print(w io.Writer, s *system, g *guidance, dir string) error
 	}
 	fmt.Fprintf(&b, "\n  %d orbitals, %d up and %d down electrons, %d frozen orbitals, %d factors\n",
 		out.Orbitals, out.Up, out.Down, s.frozen, out.Factors)
-	fmt.Fprintf(&b, "  walkers keep the spin of their %v start, <S^2> = %.4g\n", s.start.Kind, s.start.SpinSquared)
+	fmt.Fprintf(&b, "  walkers keep the spin of their %v start, <S^2> = %.4f\n", s.start.Kind, s.start.SpinSquared)
 	fmt.Fprintf(&b, "  seed %d, kernel %s, version %s, %.0f s; status: %s\n", out.Seed, out.Kernel, out.Version, out.WallSeconds, out.Status)
 	if len(out.Warnings) > 0 {
 		fmt.Fprintf(&b, "\n  warnings\n")
@@ -281,7 +307,7 @@ func (out *summary) print(w io.Writer, s *system, g *guidance, dir string) error
 			fmt.Fprintf(&b, "  a warning of the level stop: do not quote this number\n")
 		}
 	}
-	fmt.Fprintf(&b, "\n  results in %s\n", filepath.ToSlash(dir))
+	fmt.Fprintf(&b, "\n  results in %s\n", filepath.ToSlash(r.dir))
 	_, err := io.WriteString(w, b.String())
 	return err
 }

@@ -144,12 +144,7 @@ func (w *window) solve(ctx context.Context, s *system) (*expansion.Expansion, er
 	if err := checkMemory(bytes, fmt.Sprintf("the window of %d determinants", determinants)); err != nil {
 		return nil, fmt.Errorf("trial.active: %w", err)
 	}
-	options := exact.Options{MemoryLimit: math.MaxInt64}
-	if exact.CommutesWithSpin(w.h) {
-		spin := s.spin()
-		options.Spin = &spin
-	}
-	result, err := exact.Solve(ctx, w.h, options)
+	result, err := exact.Solve(ctx, w.h, exact.Options{MemoryLimit: math.MaxInt64, Spin: s.keptSpin()})
 	if err != nil {
 		return nil, fmt.Errorf("trial.active: %w", err)
 	}
