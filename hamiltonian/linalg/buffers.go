@@ -49,9 +49,10 @@ func carve[T float](b *buffer) (left, right []T) {
 
 // workspace is memory for small factorisations.
 type workspace struct {
-	elimination elimination
-	numbers     []float64
-	pivots      []int
+	numbers       []float64
+	pivots, order []int
+	elimination   elimination
+	lanes         laneBatch
 }
 
 var workspaces struct {
@@ -83,7 +84,7 @@ func (w *workspace) reserve(numbers, pivots int) []float64 {
 		w.numbers = make([]float64, numbers+8)
 	}
 	if len(w.pivots) < pivots {
-		w.pivots = make([]int, pivots)
+		w.pivots, w.order = make([]int, pivots), make([]int, pivots)
 	}
 	skip := -int(uintptr(unsafe.Pointer(&w.numbers[0]))/8) & 7
 	return w.numbers[skip:][:numbers]

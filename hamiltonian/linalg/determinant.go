@@ -50,16 +50,11 @@ func (x determinant) polar() (logAbs float64, phase complex128) {
 	return math.Log(size) + float64(x.exponent)*math.Ln2, complex(real(x.mantissa)/size, imag(x.mantissa)/size)
 }
 
-// reciprocal returns 1/d without overflow of |d|²; Smith, Commun. ACM 5, 435
-// (1962), from memory.
+// reciprocal returns 1/d = conj(d/s)/(s·|d/s|²) with s = |re|+|im|, so that |d|²
+// does not overflow.
 func reciprocal(d complex128) complex128 {
-	a, b := real(d), imag(d)
-	if math.Abs(a) >= math.Abs(b) {
-		r := b / a
-		s := 1 / (a + b*r)
-		return complex(s, -r*s)
-	}
-	r := a / b
-	s := 1 / (a*r + b)
-	return complex(r*s, -s)
+	s := math.Abs(real(d)) + math.Abs(imag(d))
+	a, b := real(d)/s, imag(d)/s
+	t := (a*a + b*b) * s
+	return complex(a/t, 0-b/t)
 }

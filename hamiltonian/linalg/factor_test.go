@@ -106,26 +106,104 @@ func testInvertBatch(t *testing.T, _ tier) {
 	}
 }
 
+// TestInvertBatchSameBits: a matrix fares the same alone and in any batch, and on
+// every tier with kernels.
+func TestInvertBatchSameBits(t *testing.T) {
+	if len(tiers()) == 1 {
+		t.Skip("no kernels on this processor")
+	}
+	defer func(was tier) { active = was }(active)
+	rng := rand.New(rand.NewPCG(2, 2))
+	for n := range laneLimit + 3 {
+		const count = 21
+		size := 2 * n * n
+		a := gaussian(rng, count*size)
+		run := func(from, to int) (inverse, logAbs []float64, phase []complex128) {
+			inverse = append([]float64(nil), a[from*size:to*size]...)
+			logAbs, phase = make([]float64, 2*(to-from)), make([]complex128, 2*(to-from))
+			InvertBatch(n, to-from, inverse, logAbs, phase)
+			LogDetBatch(n, to-from, append([]float64(nil), a[from*size:to*size]...), logAbs[to-from:], phase[to-from:])
+			return inverse, logAbs, phase
+		}
+		active = tiers()[1]
+		want, wantLog, wantPhase := run(0, count)
+		for _, active = range tiers()[1:] {
+			for _, cut := range [][2]int{{0, count}, {0, 1}, {3, 4}, {2, 12}, {5, 13}} {
+				from, to := cut[0], cut[1]
+				got, gotLog, gotPhase := run(from, to)
+				for i, x := range got {
+					if x != want[from*size+i] {
+						t.Fatalf("%v n=%d: element %d of matrices %v is %v, in the batch of all %v", active, n, i, cut, x, want[from*size+i])
+					}
+				}
+				for i := range to - from {
+					for half := range 2 {
+						x, y := half*(to-from)+i, half*count+from+i
+						if gotLog[x] != wantLog[y] || gotPhase[x] != wantPhase[y] {
+							t.Fatalf("%v n=%d: determinant of matrix %d in %v differs", active, n, i, cut)
+						}
+					}
+				}
+			}
+		}
+	}
+}
+
 func TestInvertBatchSingular(t *testing.T) { eachTier(t, testInvertBatchSingular) }
 
 func testInvertBatchSingular(t *testing.T, _ tier) {
 	// Row 3 is half of row 1 and all pivots are powers of two: every step is exact.
-	a := []float64{4, 2, 8, 0, 2, 6, 2, 1, 4, 0, 4, 0, 0, 0, 1, 0, 2, 0}
-	b := append([]float64(nil), a...)
-	logAbs, phase := []float64{7}, []complex128{7}
-	InvertBatch(3, 1, a, logAbs, phase)
-	if !math.IsInf(logAbs[0], -1) || phase[0] != 0 {
-		t.Errorf("inverse of a singular matrix: log|det| %v, phase %v", logAbs, phase)
-	}
-	for _, v := range a {
-		if v != 0 {
-			t.Fatal("inverse of a singular matrix is not zero")
+	singular := []float64{4, 2, 8, 0, 2, 6, 2, 1, 4, 0, 4, 0, 0, 0, 1, 0, 2, 0}
+	rng := rand.New(rand.NewPCG(2, 3))
+	for _, count := range []int{1, 9} {
+		a := gaussian(rng, 18*count)
+		at := min(3, count-1)
+		copy(a[18*at:], singular)
+		b := append([]float64(nil), a...)
+		logAbs, phase := make([]float64, count), make([]complex128, count)
+		InvertBatch(3, count, a, logAbs, phase)
+		for w := range count {
+			if zero := math.IsInf(logAbs[w], -1) && phase[w] == 0; zero != (w == at) {
+				t.Errorf("inverse %d of %d: log|det| %v, phase %v", w, count, logAbs[w], phase[w])
+			}
+			for _, v := range a[18*w : 18*w+18] {
+				if (v == 0) != (w == at) || math.IsNaN(v) {
+					t.Fatalf("%v in inverse %d of %d, matrix %d is singular", v, w, count, at)
+				}
+			}
+		}
+		LogDetBatch(3, count, b, logAbs, phase)
+		for w := range count {
+			if zero := math.IsInf(logAbs[w], -1) && phase[w] == 0; zero != (w == at) {
+				t.Errorf("determinant %d of %d: log|det| %v, phase %v", w, count, logAbs[w], phase[w])
+			}
 		}
 	}
-	LogDetBatch(3, 1, b, logAbs, phase)
-	if !math.IsInf(logAbs[0], -1) || phase[0] != 0 {
-		t.Errorf("singular matrix: log|det| %v, phase %v", logAbs, phase)
-	}
+}
+
+// TestLogDetBatchRange: determinants far outside of the range of float64.
+func TestLogDetBatchRange(t *testing.T) {
+	eachTier(t, func(t *testing.T, _ tier) {
+		for _, scale := range []float64{1e-150, 1e150, 1e-300, 1e300} {
+			const n, count = 12, 9
+			a := make([]float64, count*2*n*n)
+			for w := range count {
+				for i := range n {
+					a[w*2*n*n+n*n+i*n+i] = scale // i·scale on the diagonal, i¹² = 1
+				}
+			}
+			logAbs, phase := make([]float64, count), make([]complex128, count)
+			InvertBatch(n, count, append([]float64(nil), a...), logAbs, phase)
+			for range 2 {
+				for w := range count {
+					if want := n * math.Log(scale); math.Abs(logAbs[w]-want) > 1e-15*math.Abs(want) || phase[w] != 1 {
+						t.Fatalf("scale %g, matrix %d: %v %v, expected %v", scale, w, logAbs[w], phase[w], want)
+					}
+				}
+				LogDetBatch(n, count, a, logAbs, phase)
+			}
+		}
+	})
 }
 
 func TestInvertBatchNaN(t *testing.T) { eachTier(t, testInvertBatchNaN) }

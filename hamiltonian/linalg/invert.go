@@ -12,18 +12,36 @@ import "math"
 // place in the batch. 8·n³ flops each.
 func InvertBatch(n, count int, a []float64, logAbs []float64, phase []complex128) {
 	checkBatch(n, count, a, logAbs, phase)
-	e := newElimination(active, n)
-	defer giveWorkspace(e.workspace)
-	for w := range count {
-		block := a[w*2*n*n : (w+1)*2*n*n]
+	w := takeWorkspace()
+	defer giveWorkspace(w)
+	size, done := 2*n*n, 0
+	if active != portable && n > 0 && n <= laneLimit {
+		b := newLaneBatch(active, w, n)
+		for ; done+b.lanes <= count; done += b.lanes {
+			group := a[done*size : (done+b.lanes)*size]
+			b.run(group, true)
+			b.unload()
+			for lane := range b.lanes {
+				det, block := b.determinant(lane), group[lane*size:(lane+1)*size]
+				if det.mantissa == 0 {
+					clear(block)
+				} else {
+					b.inverse(lane, block, w.order[:n])
+				}
+				logAbs[done+lane], phase[done+lane] = det.polar()
+			}
+		}
+	}
+	for e := newElimination(active, w, n); done < count; done++ {
+		block := a[done*size : (done+1)*size]
 		e.load(block)
 		det := e.invert()
 		if det.mantissa == 0 {
 			clear(block)
 		} else {
-			e.storeInverse(block)
+			e.storeInverse(block, w.order[:n])
 		}
-		logAbs[w], phase[w] = det.polar()
+		logAbs[done], phase[done] = det.polar()
 	}
 }
 
@@ -32,11 +50,21 @@ func InvertBatch(n, count int, a []float64, logAbs []float64, phase []complex128
 // (8/3)·n³ flops each.
 func LogDetBatch(n, count int, a []float64, logAbs []float64, phase []complex128) {
 	checkBatch(n, count, a, logAbs, phase)
-	e := newElimination(active, n)
-	defer giveWorkspace(e.workspace)
-	for w := range count {
-		e.load(a[w*2*n*n : (w+1)*2*n*n])
-		logAbs[w], phase[w] = e.determinant().polar()
+	w := takeWorkspace()
+	defer giveWorkspace(w)
+	size, done := 2*n*n, 0
+	if active != portable && n > 0 && n <= laneLimit {
+		b := newLaneBatch(active, w, n)
+		for ; done+b.lanes <= count; done += b.lanes {
+			b.run(a[done*size:(done+b.lanes)*size], false)
+			for lane := range b.lanes {
+				logAbs[done+lane], phase[done+lane] = b.determinant(lane).polar()
+			}
+		}
+	}
+	for e := newElimination(active, w, n); done < count; done++ {
+		e.load(a[done*size : (done+1)*size])
+		logAbs[done], phase[done] = e.determinant().polar()
 	}
 }
 
@@ -51,25 +79,23 @@ func checkBatch(n, count int, a []float64, logAbs []float64, phase []complex128)
 
 // elimination holds one matrix at a time, its rows padded to whole vectors.
 type elimination struct {
-	workspace *workspace
-	tier      tier
-	n         int
-	matrix    planes
-	column    planes // of factors, contiguous
-	pivots    []int
+	tier   tier
+	n      int
+	matrix planes
+	column planes // of factors, contiguous
+	pivots []int
 }
 
-func newElimination(t tier, n int) *elimination {
-	w := takeWorkspace()
+func newElimination(t tier, w *workspace, n int) *elimination {
 	ld := padded(t, n)
 	x := w.reserve(2*n*ld+2*ld, n)
+	clear(x) // the padding must not hold numbers that are slow to add
 	e := &w.elimination
 	*e = elimination{
-		workspace: w, tier: t, n: n, pivots: w.pivots[:n],
+		tier: t, n: n, pivots: w.pivots[:n],
 		matrix: planes{re: x[:n*ld], im: x[n*ld : 2*n*ld], stride: ld},
 		column: planes{re: x[2*n*ld:][:ld], im: x[2*n*ld+ld:]},
 	}
-	clear(x) // the padding must not hold numbers that are slow to add
 	return e
 }
 
@@ -81,25 +107,27 @@ func (e *elimination) load(block []float64) {
 	}
 }
 
-// storeInverse writes the matrix with the exchanges of its rows undone, which
-// are exchanges of columns of the inverse, last one first.
-func (e *elimination) storeInverse(block []float64) {
+// undoExchanges sets order to where each column of the inverse of a matrix is
+// found in that of the matrix with its rows exchanged: at step k with row
+// pivots[k·stride].
+func undoExchanges(order, pivots []int, stride int) {
+	for j := range order {
+		order[j] = j
+	}
+	for k := len(order) - 1; k >= 0; k-- {
+		p := pivots[k*stride]
+		order[k], order[p] = order[p], order[k]
+	}
+}
+
+// storeInverse writes the matrix with the exchanges of its rows undone.
+func (e *elimination) storeInverse(block []float64, order []int) {
 	n, m := e.n, e.matrix
-	from := e.column.re // as numbers: where column j comes from
-	for j := range n {
-		from[j] = float64(j)
-	}
-	for k := n - 1; k >= 0; k-- {
-		p := e.pivots[k]
-		from[k], from[p] = from[p], from[k]
-	}
-	for j, c := range from[:n] {
-		e.pivots[j] = int(c)
-	}
+	undoExchanges(order, e.pivots, 1)
 	for i := range n {
 		re, im := m.re[i*m.stride:][:n], m.im[i*m.stride:][:n]
 		toRe, toIm := block[i*n:][:n], block[n*n+i*n:][:n]
-		for j, c := range e.pivots {
+		for j, c := range order {
 			toRe[j], toIm[j] = re[c], im[c]
 		}
 	}

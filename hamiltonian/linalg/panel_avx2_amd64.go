@@ -26,4 +26,7 @@ func edge1AVX2(p *byte)
 func outerAVX2(p *byte)
 
 //go:noescape
+func eliminateAVX2(p *byte)
+
+//go:noescape
 func transposeAVX2(dst *float64, dstRow int, src *float64, srcRow int, rows int, cols int)

@@ -1586,6 +1586,192 @@ below1:
 	VZEROUPPER
 	RET
 
+// func eliminateAVX2(p *byte)
+// Requires: AVX, AVX2, FMA3, SSE2
+TEXT ·eliminateAVX2(SB), NOSPLIT, $0-8
+	MOVQ     p+0(FP), AX
+	VPCMPEQD Y0, Y0, Y0
+	VPSRLQ   $0x01, Y0, Y1
+	VPSRLQ   $0x3f, Y0, Y0
+	VPXOR    Y2, Y2, Y2
+	MOVQ     (AX), CX
+	MOVQ     CX, DX
+	IMULQ    CX, DX
+	SHLQ     $0x05, CX
+	SHLQ     $0x05, DX
+	XORQ     BX, BX
+	MOVQ     16(AX), SI
+	LEAQ     (SI)(DX*1), DI
+	MOVQ     24(AX), R8
+	LEAQ     (R8)(CX*1), R9
+	LEAQ     (R8)(CX*2), R10
+	LEAQ     (R9)(CX*2), R11
+
+step:
+	LEAQ     (SI)(BX*1), R12
+	LEAQ     (DI)(BX*1), R13
+	MOVQ     CX, R14
+	SUBQ     BX, R14
+	VPCMPEQD Y13, Y13, Y13
+	VMOVUPD  Y2, Y4
+	VMOVUPD  Y2, Y3
+
+search:
+	VMOVUPD   (R12), Y9
+	VMOVUPD   (R13), Y10
+	VPAND     Y1, Y9, Y9
+	VPAND     Y1, Y10, Y10
+	VADDPD    Y10, Y9, Y9
+	VPCMPGTQ  Y13, Y9, Y14
+	VBLENDVPD Y14, Y9, Y13, Y13
+	VBLENDVPD Y14, Y4, Y3, Y3
+	VPADDQ    Y0, Y4, Y4
+	ADDQ      CX, R12
+	ADDQ      CX, R13
+	SUBQ      $0x20, R14
+	JNE       search
+	MOVQ      40(AX), R12
+	VMOVUPD   Y3, (R12)(BX*1)
+	MOVQ      8(AX), R12
+	DECQ      R12
+	ANDQ      BX, R12
+
+collect:
+	VMOVUPD (SI)(R12*1), Y9
+	VMOVUPD (DI)(R12*1), Y10
+	VMOVUPD Y9, (R10)(R12*1)
+	VMOVUPD Y10, (R11)(R12*1)
+	LEAQ    (SI)(R12*1), R13
+	LEAQ    (DI)(R12*1), R14
+	MOVQ    CX, R15
+	SUBQ    BX, R15
+	VMOVUPD Y2, Y4
+	JMP     collected
+
+candidate:
+	VPADDQ    Y0, Y4, Y4
+	ADDQ      CX, R13
+	ADDQ      CX, R14
+	VPCMPEQQ  Y3, Y4, Y14
+	VBLENDVPD Y14, (R13), Y9, Y9
+	VBLENDVPD Y14, (R14), Y10, Y10
+
+collected:
+	SUBQ         $0x20, R15
+	JNE          candidate
+	VMOVUPD      Y9, (R8)(R12*1)
+	VMOVUPD      Y10, (R9)(R12*1)
+	ADDQ         $0x20, R12
+	CMPQ         R12, CX
+	JLT          collect
+	MOVQ         32(AX), R12
+	LEAQ         (R12)(BX*2), R12
+	VMOVUPD      (R8)(BX*1), Y9
+	VMOVUPD      (R9)(BX*1), Y10
+	VMOVUPD      Y9, (R12)
+	VMOVUPD      Y10, 32(R12)
+	VMOVUPD      Y9, Y11
+	VMOVUPD      Y10, Y12
+	VPAND        Y1, Y11, Y11
+	VPAND        Y1, Y12, Y12
+	VADDPD       Y12, Y11, Y13
+	VDIVPD       Y13, Y9, Y9
+	VDIVPD       Y13, Y10, Y10
+	VMULPD       Y9, Y9, Y11
+	VMULPD       Y10, Y10, Y12
+	VADDPD       Y12, Y11, Y11
+	VMULPD       Y13, Y11, Y11
+	VDIVPD       Y11, Y9, Y5
+	VDIVPD       Y11, Y10, Y6
+	VPXOR        Y12, Y12, Y12
+	VSUBPD       Y6, Y12, Y6
+	VMOVUPD      (R10)(BX*1), Y7
+	VMOVUPD      (R11)(BX*1), Y8
+	VMOVUPD      Y12, (R10)(BX*1)
+	VMOVUPD      Y12, (R11)(BX*1)
+	MOVQ         $0x3ff0000000000000, R12
+	MOVQ         R12, X11
+	VBROADCASTSD X11, Y11
+	VMOVUPD      Y11, (R8)(BX*1)
+	VMOVUPD      Y12, (R9)(BX*1)
+	MOVQ         8(AX), R12
+	DECQ         R12
+	ANDQ         BX, R12
+
+scale:
+	VMOVUPD (R8)(R12*1), Y9
+	VMOVUPD (R9)(R12*1), Y10
+	VMULPD  Y5, Y9, Y11
+	VMULPD  Y6, Y10, Y12
+	VSUBPD  Y12, Y11, Y11
+	VMULPD  Y5, Y10, Y12
+	VMULPD  Y6, Y9, Y13
+	VADDPD  Y13, Y12, Y12
+	VMOVUPD Y11, (R8)(R12*1)
+	VMOVUPD Y12, (R9)(R12*1)
+	VMOVUPD Y11, (SI)(R12*1)
+	VMOVUPD Y12, (DI)(R12*1)
+	ADDQ    $0x20, R12
+	CMPQ    R12, CX
+	JLT     scale
+	MOVQ    16(AX), R13
+	LEAQ    (R13)(DX*1), R14
+	VPXOR   Y4, Y4, Y4
+	CMPQ    8(AX), $0x00
+	JNE     rows
+	MOVQ    SI, R13
+	MOVQ    DI, R14
+	VMOVUPD Y2, Y4
+
+rows:
+	CMPQ      R13, SI
+	JEQ       nextRow
+	VPCMPEQQ  Y3, Y4, Y14
+	VMOVUPD   (R13)(BX*1), Y5
+	VMOVUPD   (R14)(BX*1), Y6
+	VBLENDVPD Y14, Y7, Y5, Y5
+	VBLENDVPD Y14, Y8, Y6, Y6
+	VPXOR     Y11, Y11, Y11
+	VMOVUPD   Y11, (R13)(BX*1)
+	VMOVUPD   Y11, (R14)(BX*1)
+	MOVQ      8(AX), R12
+	DECQ      R12
+	ANDQ      BX, R12
+
+subtract:
+	VMOVUPD      (R13)(R12*1), Y9
+	VMOVUPD      (R14)(R12*1), Y10
+	VBLENDVPD    Y14, (R10)(R12*1), Y9, Y9
+	VBLENDVPD    Y14, (R11)(R12*1), Y10, Y10
+	VMOVUPD      (R8)(R12*1), Y11
+	VMOVUPD      (R9)(R12*1), Y12
+	VFNMADD231PD Y11, Y5, Y9
+	VFNMADD231PD Y12, Y5, Y10
+	VFMADD231PD  Y12, Y6, Y9
+	VFNMADD231PD Y11, Y6, Y10
+	VMOVUPD      Y9, (R13)(R12*1)
+	VMOVUPD      Y10, (R14)(R12*1)
+	ADDQ         $0x20, R12
+	CMPQ         R12, CX
+	JLT          subtract
+
+nextRow:
+	VPADDQ Y0, Y4, Y4
+	ADDQ   CX, R13
+	ADDQ   CX, R14
+	MOVQ   16(AX), R12
+	ADDQ   DX, R12
+	CMPQ   R13, R12
+	JLT    rows
+	ADDQ   CX, SI
+	ADDQ   CX, DI
+	VPADDQ Y0, Y2, Y2
+	ADDQ   $0x20, BX
+	CMPQ   BX, CX
+	JLT    step
+	VZEROUPPER
+	RET
+
 // func transposeAVX2(dst *float64, dstRow int, src *float64, srcRow int, rows int, cols int)
 // Requires: AVX
 TEXT ·transposeAVX2(SB), NOSPLIT, $0-48

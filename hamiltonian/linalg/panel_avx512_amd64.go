@@ -24,3 +24,6 @@ func edge1AVX512(p *byte)
 
 //go:noescape
 func outerAVX512(p *byte)
+
+//go:noescape
+func eliminateAVX512(p *byte)

@@ -2561,3 +2561,189 @@ row1:
 below1:
 	VZEROUPPER
 	RET
+
+// func eliminateAVX512(p *byte)
+// Requires: AVX, AVX512F, SSE2
+TEXT ·eliminateAVX512(SB), NOSPLIT, $0-8
+	MOVQ       p+0(FP), AX
+	VPTERNLOGQ $0xff, Z0, Z0, Z0
+	VPSRLQ     $0x01, Z0, Z1
+	VPSRLQ     $0x3f, Z0, Z0
+	VPXORQ     Z2, Z2, Z2
+	MOVQ       (AX), CX
+	MOVQ       CX, DX
+	IMULQ      CX, DX
+	SHLQ       $0x06, CX
+	SHLQ       $0x06, DX
+	XORQ       BX, BX
+	MOVQ       16(AX), SI
+	LEAQ       (SI)(DX*1), DI
+	MOVQ       24(AX), R8
+	LEAQ       (R8)(CX*1), R9
+	LEAQ       (R8)(CX*2), R10
+	LEAQ       (R9)(CX*2), R11
+
+step:
+	LEAQ       (SI)(BX*1), R12
+	LEAQ       (DI)(BX*1), R13
+	MOVQ       CX, R14
+	SUBQ       BX, R14
+	VPTERNLOGQ $0xff, Z13, Z13, Z13
+	VMOVUPD    Z2, Z4
+	VMOVUPD    Z2, Z3
+
+search:
+	VMOVUPD  (R12), Z9
+	VMOVUPD  (R13), Z10
+	VPANDQ   Z1, Z9, Z9
+	VPANDQ   Z1, Z10, Z10
+	VADDPD   Z10, Z9, Z9
+	VPCMPGTQ Z13, Z9, K2
+	VMOVUPD  Z9, K2, Z13
+	VMOVUPD  Z4, K2, Z3
+	VPADDQ   Z0, Z4, Z4
+	ADDQ     CX, R12
+	ADDQ     CX, R13
+	SUBQ     $0x40, R14
+	JNE      search
+	MOVQ     40(AX), R12
+	VMOVUPD  Z3, (R12)(BX*1)
+	MOVQ     8(AX), R12
+	DECQ     R12
+	ANDQ     BX, R12
+
+collect:
+	VMOVUPD (SI)(R12*1), Z9
+	VMOVUPD (DI)(R12*1), Z10
+	VMOVUPD Z9, (R10)(R12*1)
+	VMOVUPD Z10, (R11)(R12*1)
+	LEAQ    (SI)(R12*1), R13
+	LEAQ    (DI)(R12*1), R14
+	MOVQ    CX, R15
+	SUBQ    BX, R15
+	VMOVUPD Z2, Z4
+	JMP     collected
+
+candidate:
+	VPADDQ   Z0, Z4, Z4
+	ADDQ     CX, R13
+	ADDQ     CX, R14
+	VPCMPEQQ Z3, Z4, K2
+	VMOVUPD  (R13), K2, Z9
+	VMOVUPD  (R14), K2, Z10
+
+collected:
+	SUBQ         $0x40, R15
+	JNE          candidate
+	VMOVUPD      Z9, (R8)(R12*1)
+	VMOVUPD      Z10, (R9)(R12*1)
+	ADDQ         $0x40, R12
+	CMPQ         R12, CX
+	JLT          collect
+	MOVQ         32(AX), R12
+	LEAQ         (R12)(BX*2), R12
+	VMOVUPD      (R8)(BX*1), Z9
+	VMOVUPD      (R9)(BX*1), Z10
+	VMOVUPD      Z9, (R12)
+	VMOVUPD      Z10, 64(R12)
+	VMOVUPD      Z9, Z11
+	VMOVUPD      Z10, Z12
+	VPANDQ       Z1, Z11, Z11
+	VPANDQ       Z1, Z12, Z12
+	VADDPD       Z12, Z11, Z13
+	VDIVPD       Z13, Z9, Z9
+	VDIVPD       Z13, Z10, Z10
+	VMULPD       Z9, Z9, Z11
+	VMULPD       Z10, Z10, Z12
+	VADDPD       Z12, Z11, Z11
+	VMULPD       Z13, Z11, Z11
+	VDIVPD       Z11, Z9, Z5
+	VDIVPD       Z11, Z10, Z6
+	VPXORQ       Z12, Z12, Z12
+	VSUBPD       Z6, Z12, Z6
+	VMOVUPD      (R10)(BX*1), Z7
+	VMOVUPD      (R11)(BX*1), Z8
+	VMOVUPD      Z12, (R10)(BX*1)
+	VMOVUPD      Z12, (R11)(BX*1)
+	MOVQ         $0x3ff0000000000000, R12
+	MOVQ         R12, X11
+	VBROADCASTSD X11, Z11
+	VMOVUPD      Z11, (R8)(BX*1)
+	VMOVUPD      Z12, (R9)(BX*1)
+	MOVQ         8(AX), R12
+	DECQ         R12
+	ANDQ         BX, R12
+
+scale:
+	VMOVUPD (R8)(R12*1), Z9
+	VMOVUPD (R9)(R12*1), Z10
+	VMULPD  Z5, Z9, Z11
+	VMULPD  Z6, Z10, Z12
+	VSUBPD  Z12, Z11, Z11
+	VMULPD  Z5, Z10, Z12
+	VMULPD  Z6, Z9, Z13
+	VADDPD  Z13, Z12, Z12
+	VMOVUPD Z11, (R8)(R12*1)
+	VMOVUPD Z12, (R9)(R12*1)
+	VMOVUPD Z11, (SI)(R12*1)
+	VMOVUPD Z12, (DI)(R12*1)
+	ADDQ    $0x40, R12
+	CMPQ    R12, CX
+	JLT     scale
+	MOVQ    16(AX), R13
+	LEAQ    (R13)(DX*1), R14
+	VPXORQ  Z4, Z4, Z4
+	CMPQ    8(AX), $0x00
+	JNE     rows
+	MOVQ    SI, R13
+	MOVQ    DI, R14
+	VMOVUPD Z2, Z4
+
+rows:
+	CMPQ     R13, SI
+	JEQ      nextRow
+	VPCMPEQQ Z3, Z4, K2
+	VMOVUPD  (R13)(BX*1), Z5
+	VMOVUPD  (R14)(BX*1), Z6
+	VMOVUPD  Z7, K2, Z5
+	VMOVUPD  Z8, K2, Z6
+	VPXORQ   Z11, Z11, Z11
+	VMOVUPD  Z11, (R13)(BX*1)
+	VMOVUPD  Z11, (R14)(BX*1)
+	MOVQ     8(AX), R12
+	DECQ     R12
+	ANDQ     BX, R12
+
+subtract:
+	VMOVUPD      (R13)(R12*1), Z9
+	VMOVUPD      (R14)(R12*1), Z10
+	VMOVUPD      (R10)(R12*1), K2, Z9
+	VMOVUPD      (R11)(R12*1), K2, Z10
+	VMOVUPD      (R8)(R12*1), Z11
+	VMOVUPD      (R9)(R12*1), Z12
+	VFNMADD231PD Z11, Z5, Z9
+	VFNMADD231PD Z12, Z5, Z10
+	VFMADD231PD  Z12, Z6, Z9
+	VFNMADD231PD Z11, Z6, Z10
+	VMOVUPD      Z9, (R13)(R12*1)
+	VMOVUPD      Z10, (R14)(R12*1)
+	ADDQ         $0x40, R12
+	CMPQ         R12, CX
+	JLT          subtract
+
+nextRow:
+	VPADDQ Z0, Z4, Z4
+	ADDQ   CX, R13
+	ADDQ   CX, R14
+	MOVQ   16(AX), R12
+	ADDQ   DX, R12
+	CMPQ   R13, R12
+	JLT    rows
+	ADDQ   CX, SI
+	ADDQ   CX, DI
+	VPADDQ Z0, Z2, Z2
+	ADDQ   $0x40, BX
+	CMPQ   BX, CX
+	JLT    step
+	VZEROUPPER
+	RET

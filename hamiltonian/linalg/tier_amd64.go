@@ -154,3 +154,11 @@ func runOuter(t tier, o *outer) {
 		outerAVX2((*byte)(unsafe.Pointer(o)))
 	}
 }
+
+func runLanes(t tier, c *lanesCall) {
+	if t == avx512 {
+		eliminateAVX512((*byte)(unsafe.Pointer(c)))
+	} else {
+		eliminateAVX2((*byte)(unsafe.Pointer(c)))
+	}
+}

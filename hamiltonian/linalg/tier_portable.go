@@ -16,3 +16,5 @@ func transposeBlock[T float](dst []T, dstRow int, src []T, srcRow, rows, cols in
 }
 
 func runOuter(tier, *outer) { panic("linalg: no kernel in this build") }
+
+func runLanes(tier, *lanesCall) { panic("linalg: no kernel in this build") }

@@ -28,6 +28,7 @@ func main() {
 	}
 	if s.double {
 		s.outer()
+		s.eliminate()
 	}
 	if !s.avx512 {
 		s.transpose()

@@ -182,3 +182,12 @@ func (r rows) move(step GPVirtual) {
 		ADDQ(step, r.high)
 	}
 }
+
+// and clears the bits of v that mask lacks.
+func (s isa) and(mask, v VecPhysical) {
+	if s.avx512 {
+		VPANDQ(mask, v, v)
+	} else {
+		VPAND(mask, v, v)
+	}
+}
