@@ -17,8 +17,8 @@ import (
 	"syscall"
 
 	"github.com/spf13/cobra"
-	//BLAS "gonum.org/v1/gonum/blas/blas64"
-	//BLAS "leadline/hamiltonian/linalg"
+	"gonum.org/v1/gonum/blas/blas64"
+	"leadline/hamiltonian/linalg"
 )
 
 const (
@@ -30,7 +30,7 @@ const (
 )
 
 func main() {
-	//BLAS blas64.Use(linalg.BLAS())
+	blas64.Use(linalg.BLAS())
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	// A second interrupt ends the program at once.
 	context.AfterFunc(ctx, stop)
