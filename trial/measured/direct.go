@@ -151,6 +151,8 @@ func (d *Direct) average(a *direct, count int) {
 	factor := complex(1/d.shots, 0)
 	if row == 0 {
 		factor *= 2
+	} else if d.header.Order == record.Interleaved && interleavedSign(d.header) {
+		factor = -factor // conj(Ψ_r) in blocked order
 	}
 	if d.header.Ensemble.Clifford() {
 		d.affine(a, row)
@@ -252,4 +254,19 @@ func (d *Direct) measured() int {
 		n++
 	}
 	return n
+}
+
+// interleavedSign reports whether the amplitude of the reference determinant
+// changes sign between blocked and interleaved order: an odd number of pairs of
+// an α electron with a β electron in a lower orbital.
+func interleavedSign(h *record.Header) bool {
+	n := 0
+	for i, p := range h.Occupied {
+		for _, q := range h.Occupied[:i] {
+			if p%2 == 0 && q%2 == 1 {
+				n++
+			}
+		}
+	}
+	return n%2 == 1
 }

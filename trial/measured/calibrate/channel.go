@@ -144,6 +144,20 @@ func (c *Channel) Fits(h *record.Header) error {
 	return nil
 }
 
+// Setting returns the mean of the single-shot estimates of one setting, with no
+// regard to its kind.
+func Setting(h *record.Header, s *record.Setting) ([]float64, error) {
+	f := make([]float64, len(Ideal(h.Ensemble, h.Qubits)))
+	if err := newSampler(h).add(f, s); err != nil {
+		return nil, err
+	}
+	shots := float64(s.Count())
+	for k := range f {
+		f[k] /= shots
+	}
+	return f, nil
+}
+
 // sampler turns settings into sums of single-shot estimates of f.
 type sampler struct {
 	h        *record.Header

@@ -259,11 +259,7 @@ func (p *plan) derivative(ctx context.Context, source record.Source, e *amplitud
 			for i, row := range p.target.rows {
 				for j, col := range p.target.cols {
 					if row|col == p.row {
-						sign := 1.0
-						if p.target.orderSign(row, col) {
-							sign = -1
-						}
-						d[i*nc+j] -= complex(sign/(p.gain*float64(uint64(1)<<p.header.Qubits)), 0)
+						d[i*nc+j] -= complex(math.Ldexp(1/p.gain, -p.header.Qubits), 0)
 					}
 				}
 			}

@@ -136,6 +136,7 @@ func (p *plan) finish(dst []complex128, acc []float64, shots float64) {
 	clifford := p.header.Ensemble.Clifford()
 	scale := p.scale / shots
 	nc := len(p.target.cols)
+	turned := p.target.orderSign(p.row&p.target.rowModes, p.row&^p.target.rowModes)
 	for i, row := range p.target.rows {
 		for j, col := range p.target.cols {
 			at := i*nc + j
@@ -153,7 +154,8 @@ func (p *plan) finish(dst []complex128, acc []float64, shots float64) {
 					re, im = -re, -im
 				}
 			}
-			if p.target.orderSign(row, col) {
+			// Ψ_D and conj(Ψ_r) both change to blocked order.
+			if p.target.orderSign(row, col) != turned {
 				re, im = -re, -im
 			}
 			dst[at] = complex(re, im)

@@ -161,8 +161,7 @@ func (d *device) choose(s *record.Setting, rng *rand.Rand) error {
 		if twirl != record.TwirlFull {
 			sortPairs(s.Pairs, twirl == record.TwirlX)
 		}
-		x, z, r := matchgate.Generators(n, s.Pairs)
-		return d.basis.Tableau(n, x, z, r)
+		return setBasis(&d.basis, d.h, s)
 	}
 	k := clifford.Rank(d.ranks, rng)
 	s.R = clifford.Subspace(s.R, n, k, rng)
@@ -173,11 +172,8 @@ func (d *device) choose(s *record.Setting, rng *rand.Rand) error {
 	if twirl != record.TwirlNone {
 		s.X = rng.Uint64() & (1<<n - 1)
 	}
-	if err := d.basis.Lagrangian(n, s.R, s.B, s.GL, s.X); err != nil {
+	if err := d.basis.Lagrangian(n, s.R, s.B, s.GL, s.X); err != nil || d.h.Ensemble == record.Lagrangian {
 		return err
-	}
-	if d.h.Ensemble == record.Lagrangian {
-		return nil
 	}
 	// The same freedom in a tableau: products of generators, and signs.
 	x, z := d.basis.Generators()
@@ -197,7 +193,7 @@ func (d *device) choose(s *record.Setting, rng *rand.Rand) error {
 	}
 	s.TSign = s.X
 	s.R, s.B, s.GL, s.X = s.R[:0], s.B[:0], s.GL[:0], 0
-	return d.basis.Tableau(n, s.TX, s.TZ, s.TSign)
+	return setBasis(&d.basis, d.h, s)
 }
 
 // sortPairs removes the random place of the pairs, and with signs false their

@@ -6,6 +6,8 @@ import (
 	"slices"
 
 	"leadline/trial/measured/clifford"
+	"leadline/trial/measured/matchgate"
+	"leadline/trial/measured/record"
 	"leadline/trial/measured/snapshot"
 )
 
@@ -65,6 +67,53 @@ func (s *sampler) draw(c *clifford.Basis, state []component, weights []float64, 
 			got(uint64(pick(cumulative, rng)), u)
 		}
 	}
+}
+
+// Probabilities returns the exact distribution of the outcomes of a setting,
+// whatever its shots, for a state vector psi of 2^n numbers whose index is the
+// mask of occupied modes.
+func Probabilities(h *record.Header, s *record.Setting, psi []complex128) ([]float64, error) {
+	p := make([]float64, 1<<h.Qubits)
+	if len(psi) != len(p) {
+		panic("simulate: state vector has the wrong length")
+	}
+	if h.Ensemble == record.Orthogonal {
+		v := append([]complex128(nil), psi...)
+		flips := circuit(v, s.Q)
+		for i, a := range v {
+			p[uint64(i)^flips] = real(a)*real(a) + imag(a)*imag(a)
+		}
+		return p, nil
+	}
+	var c clifford.Basis
+	if err := setBasis(&c, h, s); err != nil {
+		return nil, err
+	}
+	e := c.Encoder()
+	cosets := make(map[uint64][]complex128)
+	for det, a := range psi {
+		y, u := c.Coordinates(uint64(det))
+		if cosets[u] == nil {
+			cosets[u] = make([]complex128, 1<<c.K)
+		}
+		cosets[u][y] = a * snapshot.Power(-c.Phase(y))
+	}
+	for u, v := range cosets {
+		transform(v)
+		for t, a := range v {
+			p[e.Bits(uint64(t), u)] = (real(a)*real(a) + imag(a)*imag(a)) / float64(len(v))
+		}
+	}
+	return p, nil
+}
+
+// setBasis makes the stabilizer basis of any setting but an orthogonal one.
+func setBasis(c *clifford.Basis, h *record.Header, s *record.Setting) error {
+	if h.Ensemble == record.Matching {
+		x, z, r := matchgate.Generators(h.Qubits, s.Pairs)
+		return c.Tableau(h.Qubits, x, z, r)
+	}
+	return c.FromSetting(h, s)
 }
 
 // pick draws an index from a cumulative distribution of any total.

@@ -171,6 +171,10 @@ func TestOutcomesFollowTheBornRule(t *testing.T) {
 					counts[o.Bits] = float64(o.Count)
 				}
 				total := 0.0
+				exact, err := Probabilities(h, s, psi)
+				if err != nil {
+					t.Fatal(err)
+				}
 				for b := range uint64(1) << h.Qubits {
 					var p float64
 					if e == record.Lagrangian {
@@ -179,6 +183,9 @@ func TestOutcomesFollowTheBornRule(t *testing.T) {
 						p = probability(h, s, b, psi)
 					}
 					total += p
+					if math.Abs(exact[b]-p) > 1e-12 {
+						t.Fatalf("%s: probability of %b is %.15g, want %.15g", e, b, exact[b], p)
+					}
 					if p < 1e-12 {
 						if counts[b] != 0 {
 							t.Errorf("%s: impossible outcome %b drawn", e, b)

@@ -177,7 +177,7 @@ func passes(up, down uint64) bool {
 	n := 0
 	for p := down; p != 0; p &= p - 1 {
 		low := p & -p
-		n += bits.OnesCount64(up &^ (low | low - 1))
+		n += bits.OnesCount64(up &^ (2*low - 1))
 	}
 	return n&1 != 0
 }
