@@ -178,11 +178,11 @@ func TestApplyAgainstFockSpace(t *testing.T) {
 	}
 }
 
-// With more strings than fit in one piece of the work (64 up, 256 down), and with
+// With more strings than fit in one piece of the work (64 rows, 256 or 512 columns), and with
 // as many orbitals as a mask holds. The other side is a plain
 // sum over the excitation lists in the form of operator squares, v_g v_g x.
 func TestApplyInPieces(t *testing.T) {
-	for _, sector := range []hamiltonian.Sector{{Orbitals: 11, Up: 3, Down: 5}, {Orbitals: 11, Up: 8, Down: 4}, {Orbitals: 13, Up: 6, Down: 0}, {Orbitals: 64, Up: 64, Down: 1}} {
+	for _, sector := range []hamiltonian.Sector{{Orbitals: 12, Up: 3, Down: 5}, {Orbitals: 11, Up: 8, Down: 4}, {Orbitals: 13, Up: 6, Down: 0}, {Orbitals: 64, Up: 64, Down: 1}} {
 		m := sector.Orbitals
 		h := randomHamiltonian(sector, 1, 1, false, uint64(m))
 		o, err := NewOperator(h)

@@ -31,7 +31,7 @@ type unlike struct {
 type step struct{ from, to int32 }
 
 // columnsPerPart bounds the scratch of the unlike part to the second-level cache.
-const columnsPerPart = 256
+const columnsPerPart = 512
 
 func newUnlike(space *Space, two *tensor) *unlike {
 	if space.Up.Electrons() == 0 || space.Down.Electrons() == 0 {
