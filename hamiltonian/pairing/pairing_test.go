@@ -1,6 +1,8 @@
 package pairing
 
 import (
+	"context"
+	"errors"
 	"math"
 	"math/bits"
 	"strings"
@@ -102,7 +104,7 @@ func TestExact(t *testing.T) {
 		{14, 0.25, 53.81981417030138}, {14, 0.5, 49.70263718822201},
 		{16, 0.25, 69.49104350912118}, {16, 0.5, 64.49178366589867},
 	} {
-		e, err := Model{Levels: test.levels, Spacing: 1, Coupling: test.g, Pairs: test.levels / 2}.Exact()
+		e, err := Model{Levels: test.levels, Spacing: 1, Coupling: test.g, Pairs: test.levels / 2}.Exact(t.Context())
 		if err != nil || math.Abs(e-test.e) > 1e-11 {
 			t.Errorf("%d levels, G = %g: %.13f (%v), expected %.13f", test.levels, test.g, e, err, test.e)
 		}
@@ -116,7 +118,7 @@ func TestFillings(t *testing.T) {
 		for pairs := 1; pairs <= levels; pairs++ {
 			for g := 0.0; g < 30; g = 1.25*g + 0.013 {
 				m := Model{Levels: levels, Spacing: 0.7, Coupling: g, Pairs: pairs}
-				e, err := m.Exact()
+				e, err := m.Exact(t.Context())
 				if want := diagonalise(m); err != nil || math.Abs(e-want) > 1e-11*max(1, math.Abs(want)) {
 					t.Errorf("%d pairs on %d levels, G = %g: %.13f (%v), expected %.13f", pairs, levels, g, e, err, want)
 				}
@@ -131,7 +133,7 @@ func TestFillings(t *testing.T) {
 func TestCritical(t *testing.T) {
 	for _, shift := range []float64{0, 1e-15, 1e-12, -1e-9, 1e-6, -1e-3} {
 		m := Model{Levels: 4, Spacing: 1, Coupling: 2.0/3 + shift, Pairs: 2}
-		if e, err := m.Exact(); err != nil || math.Abs(e-diagonalise(m)) > 1e-12 {
+		if e, err := m.Exact(t.Context()); err != nil || math.Abs(e-diagonalise(m)) > 1e-12 {
 			t.Errorf("%g from the critical coupling: %.14f (%v), expected %.14f", shift, e, err, diagonalise(m))
 		}
 	}
@@ -151,11 +153,11 @@ func TestHoles(t *testing.T) {
 		if test.levels > 40 && testing.Short() {
 			continue
 		}
-		few, err := Model{Levels: test.levels, Spacing: 1, Coupling: test.g, Pairs: test.pairs}.Exact()
+		few, err := Model{Levels: test.levels, Spacing: 1, Coupling: test.g, Pairs: test.pairs}.Exact(t.Context())
 		if err != nil {
 			t.Fatal(err)
 		}
-		many, err := Model{Levels: test.levels, Spacing: 1, Coupling: test.g, Pairs: test.levels - test.pairs}.Exact()
+		many, err := Model{Levels: test.levels, Spacing: 1, Coupling: test.g, Pairs: test.levels - test.pairs}.Exact(t.Context())
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -178,7 +180,7 @@ func TestHalfFilled(t *testing.T) {
 		}
 	}
 	remainder := func(g float64) float64 {
-		e, err := Model{Levels: 2 * n, Spacing: 1, Coupling: g, Pairs: n}.Exact()
+		e, err := Model{Levels: 2 * n, Spacing: 1, Coupling: g, Pairs: n}.Exact(t.Context())
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -186,6 +188,14 @@ func TestHalfFilled(t *testing.T) {
 	}
 	if a, b := remainder(0.006), remainder(0.003); math.Abs(a/b-1) > 0.05 {
 		t.Errorf("third-order remainders %.4f and %.4f, expected equal within 5 %%", a, b)
+	}
+}
+
+func TestCancelled(t *testing.T) {
+	ctx, cancel := context.WithCancel(t.Context())
+	cancel()
+	if _, err := (Model{Levels: 4, Spacing: 1, Coupling: 1, Pairs: 2}).Exact(ctx); !errors.Is(err, context.Canceled) {
+		t.Errorf("got %v, expected context.Canceled", err)
 	}
 }
 
@@ -200,7 +210,7 @@ func TestViolations(t *testing.T) {
 		t.Error("129 levels are accepted")
 	}
 	for _, m := range []Model{{Levels: 4, Spacing: 0, Coupling: 1, Pairs: 2}, {Levels: 4, Spacing: 1, Coupling: -1, Pairs: 2}} {
-		if _, err := m.Exact(); err == nil {
+		if _, err := m.Exact(t.Context()); err == nil {
 			t.Errorf("%+v is accepted", m)
 		}
 	}

@@ -1,6 +1,7 @@
 package pairing
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"math"
@@ -26,7 +27,7 @@ import (
 // two radii, on paths of their own, agree to 1e-12 of the largest term in E. Costs
 // some hundred solutions of N complex linear equations: 60 levels take a second,
 // 100 some ten.
-func (m Model) Exact() (float64, error) {
+func (m Model) Exact(ctx context.Context) (float64, error) {
 	if err := m.Validate(); err != nil {
 		return 0, err
 	}
@@ -41,7 +42,10 @@ func (m Model) Exact() (float64, error) {
 	scale := max(1, centre, g*n*float64(m.Levels-m.Pairs+1))
 	previous, last := math.NaN(), error(nil)
 	for radius := 0.2; radius > 0.005; radius /= 2 {
-		e, err := newPairs(m).circle(g, radius)
+		e, err := newPairs(m).circle(ctx, g, radius)
+		if ctx.Err() != nil {
+			return 0, ctx.Err()
+		}
 		if err != nil {
 			last = err
 			continue
@@ -85,7 +89,7 @@ var errPath = errors.New("the path cannot be followed")
 
 // circle returns E(G) less the centre of the levels, from a path and a circle of
 // the given radius.
-func (p *pairs) circle(g, radius float64) (float64, error) {
+func (p *pairs) circle(ctx context.Context, g, radius float64) (float64, error) {
 	// At weak coupling E_α = 2ε_α − G + O(G²).
 	p.g = complex(0, min(radius, 0.01))
 	for a := range p.energy {
@@ -96,7 +100,7 @@ func (p *pairs) circle(g, radius float64) (float64, error) {
 	}
 	top := complex(g, radius)
 	for _, corner := range []complex128{complex(0, radius), top} {
-		if err := p.follow(corner); err != nil {
+		if err := p.follow(ctx, corner); err != nil {
 			return 0, err
 		}
 	}
@@ -110,7 +114,7 @@ func (p *pairs) circle(g, radius float64) (float64, error) {
 		p.g = top
 		for k := range points / 4 {
 			angle := math.Pi/2 - side*(float64(k)+0.5)*2*math.Pi/points
-			if err := p.follow(complex(g, 0) + cmplx.Rect(radius, angle)); err != nil {
+			if err := p.follow(ctx, complex(g, 0) + cmplx.Rect(radius, angle)); err != nil {
 				return 0, err
 			}
 			for _, e := range p.energy {
@@ -198,10 +202,14 @@ func (p *pairs) correct() bool {
 
 // follow leads the energies to the coupling `to` on a straight line, by tangents
 // and corrections. No step moves an energy by more than a fifth of its distance.
-func (p *pairs) follow(to complex128) error {
+func (p *pairs) follow(ctx context.Context, to complex128) error {
 	from := append([]complex128(nil), p.energy...)
 	right := make([]complex128, len(p.energy))
-	for length := cmplx.Abs(to - p.g); p.g != to; {
+	length := cmplx.Abs(to - p.g)
+	for steps := 0; p.g != to; steps++ {
+		if steps == 10000 || ctx.Err() != nil {
+			return errPath
+		}
 		p.evaluate()
 		for a, f := range p.equation {
 			right[a] = (1 - f) / p.g // −∂F/∂G = S
