@@ -29,6 +29,9 @@ type Estimate struct {
 	// Reference is the determinant (up, down) of a reference row, whose
 	// amplitudes carry the factor conj(Ψ_r); nil for the vacuum row.
 	Reference *[2]uint64
+	// Turn is the factor by which Rotate has turned the amplitudes so far; 0
+	// stands for 1.
+	Turn complex128
 	// Steps lists what was done to the amplitudes after averaging.
 	Steps []Step
 	// Provenance says where they come from.

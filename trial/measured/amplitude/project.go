@@ -46,6 +46,10 @@ func (e *Estimate) Rotate() Figure {
 			batch[i] *= turn
 		}
 	}
+	if e.Turn == 0 {
+		e.Turn = 1
+	}
+	e.Turn *= turn
 	e.Steps = append(e.Steps, Step{Name: fmt.Sprintf("global phase %.4f(%.4f) removed", figure.Value, figure.Error), Linear: true})
 	return figure
 }

@@ -15,9 +15,9 @@ import (
 // rowValue and colValue are the form of a setting at one string. A row meets
 // the columns lo to hi, those of its syndrome.
 type rowValue struct {
-	y, cross uint64
-	phase    uint32
-	lo, hi   int32
+	y, cross, syndrome uint64
+	phase              uint32
+	lo, hi             int32
 }
 
 type colValue struct {
@@ -47,9 +47,13 @@ type prepared struct {
 	setting record.Setting
 
 	rows  []rowValue
-	cols  []colValue
+	cols  []colValue // by syndrome
 	terms []term
-	index matchgate.Index
+	// starts are the first columns of each syndrome, if there are few;
+	// syndromes those of the columns otherwise.
+	starts    []int32
+	syndromes []uint64
+	index     matchgate.Index
 
 	shots, rejected int64
 
@@ -253,19 +257,21 @@ func (w *preparer) strings(p *prepared) {
 		values[j] = w.form.At(mask)
 		order[j] = int32(j)
 	}
-	// Syndromes beyond a handful of bits are rare; those are sorted.
+	// Syndromes of more than a handful of bits are rare; those are sorted.
 	const counted = 10
-	var start [1<<counted + 1]int32
-	small := w.form.SyndromeBits <= counted
-	if small {
+	p.starts, p.syndromes = p.starts[:0], p.syndromes[:0]
+	if w.form.SyndromeBits <= counted {
 		used := 1 << w.form.SyndromeBits
+		p.starts = slices.Grow(p.starts, used+1)[:used+1]
+		clear(p.starts)
 		for _, v := range values {
-			start[v.Syndrome+1]++
+			p.starts[v.Syndrome+1]++
 		}
 		for i := range used {
-			start[i+1] += start[i]
+			p.starts[i+1] += p.starts[i]
 		}
-		fill := start
+		var fill [1 << counted]int32
+		copy(fill[:], p.starts[:used])
 		for j, v := range values {
 			order[fill[v.Syndrome]] = int32(j)
 			fill[v.Syndrome]++
@@ -274,6 +280,9 @@ func (w *preparer) strings(p *prepared) {
 		slices.SortFunc(order, func(a, b int32) int {
 			return cmp.Or(cmp.Compare(values[a].Syndrome, values[b].Syndrome), cmp.Compare(a, b))
 		})
+		for _, j := range order {
+			p.syndromes = append(p.syndromes, values[j].Syndrome)
+		}
 	}
 	p.cols = p.cols[:0]
 	for _, j := range order {
@@ -283,26 +292,21 @@ func (w *preparer) strings(p *prepared) {
 	p.rows = p.rows[:0]
 	for _, mask := range w.rows {
 		v := w.form.At(mask)
-		r := rowValue{y: v.Y, cross: v.Cross, phase: v.Phase & 3}
-		if small {
-			r.lo, r.hi = start[v.Syndrome], start[v.Syndrome+1]
-		} else {
-			r.lo, r.hi = equalRange(order, values, v.Syndrome)
-		}
+		r := rowValue{y: v.Y, cross: v.Cross, syndrome: v.Syndrome, phase: v.Phase & 3}
+		r.lo, r.hi = p.bucket(v.Syndrome)
 		p.rows = append(p.rows, r)
 	}
 }
 
-// equalRange finds the columns of one syndrome in the sorted order.
-func equalRange(order []int32, values []snapshot.Value, syndrome uint64) (lo, hi int32) {
-	find := func(s uint64) int {
-		i, _ := slices.BinarySearchFunc(order, s, func(j int32, s uint64) int { return cmp.Compare(values[j].Syndrome, s) })
-		return i
+// bucket returns the range of the columns of one syndrome.
+func (p *prepared) bucket(syndrome uint64) (lo, hi int32) {
+	if len(p.starts) > 0 {
+		return p.starts[syndrome], p.starts[syndrome+1]
 	}
-	lo = int32(find(syndrome))
-	hi = lo
-	for int(hi) < len(order) && values[order[hi]].Syndrome == syndrome {
-		hi++
+	first, _ := slices.BinarySearch(p.syndromes, syndrome)
+	last := first
+	for last < len(p.syndromes) && p.syndromes[last] == syndrome {
+		last++
 	}
-	return lo, hi
+	return int32(first), int32(last)
 }
