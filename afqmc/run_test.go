@@ -111,6 +111,9 @@ func TestTwoElectrons(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
+	if d := r.Figures.OverlapDeviation; d > 1e-8 {
+		t.Errorf("stored and recomputed overlaps differ by %.1e", d)
+	}
 	const exact = -1.145929 // full CI, STO-6G, 1.4 bohr: string CI of an independent code
 	if d := math.Abs(r.Energy.Mean - exact); d > 3*r.Energy.Error+3e-4 {
 		t.Errorf("energy %.5f(%.5f), exact %.5f: off by %.2g", r.Energy.Mean, r.Energy.Error, exact, d)

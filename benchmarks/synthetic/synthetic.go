@@ -23,7 +23,7 @@ func New(m, n, ng int) *hamiltonian.Hamiltonian {
 		Factors: hamiltonian.NewFactors(m, ng),
 	}
 	for g := range ng {
-		strength := 0.9 * math.Exp(-4*float64(g)/float64(ng))
+		strength := 1.3 * math.Exp(-4*float64(g)/float64(ng))
 		row := h.Factors.Row(g, hamiltonian.Up)
 		for p := range m {
 			for q := range p + 1 {
