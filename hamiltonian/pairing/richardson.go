@@ -114,7 +114,7 @@ func (p *pairs) circle(ctx context.Context, g, radius float64) (float64, error) 
 		p.g = top
 		for k := range points / 4 {
 			angle := math.Pi/2 - side*(float64(k)+0.5)*2*math.Pi/points
-			if err := p.follow(ctx, complex(g, 0) + cmplx.Rect(radius, angle)); err != nil {
+			if err := p.follow(ctx, complex(g, 0)+cmplx.Rect(radius, angle)); err != nil {
 				return 0, err
 			}
 			for _, e := range p.energy {
