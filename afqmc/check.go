@@ -29,7 +29,7 @@ func CheckTrial(g *trial.Guide) error {
 	if d := cmplx.Abs(m.Overlap[0].Value() - 1); !(d < 1e-5) {
 		return fmt.Errorf("the trial's overlap with itself is %.8g, expected 1", m.Overlap[0].Value())
 	}
-	if d := cmplx.Abs(m.Energy[0] - complex(want, 0)); !(d < 1e-7*math.Max(1, math.Abs(want))) {
+	if d := cmplx.Abs(m.Energy[0] - complex(want, 0)); !(d < 2e-6*math.Max(1, math.Abs(want))) {
 		return fmt.Errorf("the trial's local energy in itself is %.10g, expected its own energy %.10g", m.Energy[0], want)
 	}
 	return nil

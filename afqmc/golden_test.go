@@ -125,13 +125,13 @@ func TestGoldenStep(t *testing.T) {
 	near("local energy", m.Energy[0], -0.6681124253808959+1.0058471190548253i)
 
 	shift := []float64{0.1, 0.2, 0.3, 0.4}
-	p, err := NewPropagator(h, tau, shift)
+	p, err := NewPropagator(h, tau, shift, false)
 	if err != nil {
 		t.Fatal(err)
 	}
 	p.Order = 14
 	near("constant", complex(p.Constant, 0), 0.64)
-	half, err := exponential(meanFieldOneBody(h, hamiltonian.Up, shift), -0.5*tau)
+	half, err := exponentialOf(meanFieldOneBody(h, hamiltonian.Up, shift), -0.5*tau)
 	if err != nil {
 		t.Fatal(err)
 	}

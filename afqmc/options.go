@@ -17,6 +17,9 @@ type Options struct {
 	// Cap bounds E_hyb and E_L to the running energy ± √(2/τ). Automatic: on
 	// unless a factor has s = −1, where the cap would bias sign-free problems.
 	Cap Cap
+	// Single takes fields, their exponential and the force bias in single
+	// precision; overlaps, weights, local energies and sums stay double.
+	Single bool
 	// Cores is the number of goroutines that work on tiles; default 1. Results
 	// do not depend on it.
 	Cores int

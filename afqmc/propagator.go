@@ -21,12 +21,11 @@ type Propagator struct {
 	// Order is the number of terms of the Taylor series of exp(X).
 	Order int
 
-	orbitals      int
-	spins         int               // 1 where both spins are moved by the same X
-	imaginary     []bool            // η_g = i (s_g = +1) or 1 (s_g = −1)
-	half          [2]*linalg.Packed // exp(−τT/2), M×M
-	symmetric     [2]*linalg.Packed // packed factors, ng_s × M(M+1)/2
-	antisymmetric [2]*linalg.Packed // packed factors, ng_a × M(M+1)/2
+	orbitals  int
+	spins     int               // 1 where both spins are moved by the same X
+	imaginary []bool            // η_g = i (s_g = +1) or 1 (s_g = −1)
+	half      [2]*linalg.Packed // exp(−τT/2), M×M
+	exponent  exponential
 }
 
 const (
@@ -36,11 +35,12 @@ const (
 	normIterations = 20
 )
 
-// NewPropagator prepares the operands for a time step and mean-field shift l_g.
+// NewPropagator prepares the operands for a time step and mean-field shift l_g;
+// single says that fields and exponential are of single precision.
 //
 // The order of the series is the smallest with ‖X‖^(k+1)/(k+1)! < 1e-7, where
 // ‖X‖ is the largest 2-norm met in eight draws of the fields.
-func NewPropagator(h *hamiltonian.Hamiltonian, timeStep float64, shift []float64) (*Propagator, error) {
+func NewPropagator(h *hamiltonian.Hamiltonian, timeStep float64, shift []float64, single bool) (*Propagator, error) {
 	p := &Propagator{
 		TimeStep: timeStep,
 		Shift:    shift,
@@ -57,20 +57,16 @@ func NewPropagator(h *hamiltonian.Hamiltonian, timeStep float64, shift []float64
 		p.imaginary[g] = s > 0
 		p.Constant -= 0.5 * s * shift[g] * shift[g]
 	}
-	width, ns := hamiltonian.Pairs(h.Orbitals), f.Symmetric()
+	p.exponent = newExponent(f, h.Orbitals, p.spins)
+	if single {
+		p.exponent = newSingleExponent(f, h.Orbitals, p.spins)
+	}
 	for spin := range p.spins {
-		half, err := exponential(meanFieldOneBody(h, spin, shift), -0.5*timeStep)
+		half, err := exponentialOf(meanFieldOneBody(h, spin, shift), -0.5*timeStep)
 		if err != nil {
 			return nil, err
 		}
 		p.half[spin] = linalg.Pack(false, h.Orbitals, h.Orbitals, half.RawMatrix().Data, h.Orbitals)
-		packed := f.Packed[spin]
-		if ns > 0 {
-			p.symmetric[spin] = linalg.Pack(false, ns, width, packed[:ns*width], width)
-		}
-		if f.Antisymmetric > 0 {
-			p.antisymmetric[spin] = linalg.Pack(false, f.Antisymmetric, width, packed[ns*width:], width)
-		}
 	}
 	norm := p.typicalNorm()
 	p.Order = 2
@@ -100,8 +96,8 @@ func meanFieldOneBody(h *hamiltonian.Hamiltonian, spin int, shift []float64) *ma
 	return t
 }
 
-// exponential returns exp(scale·a) through the eigenvalues of a.
-func exponential(a *mat.SymDense, scale float64) (*mat.Dense, error) {
+// exponentialOf returns exp(scale·a) through the eigenvalues of a.
+func exponentialOf(a *mat.SymDense, scale float64) (*mat.Dense, error) {
 	var eigen mat.EigenSym
 	if !eigen.Factorize(a, true) {
 		return nil, fmt.Errorf("the one-body matrix could not be diagonalised")
@@ -116,43 +112,20 @@ func exponential(a *mat.SymDense, scale float64) (*mat.Dense, error) {
 
 // area is the scratch of one tile: a worker owns one and allocates nothing else.
 type area struct {
-	deviates     []float64 // y, one row per walker
+	deviates     []float64 // y of one walker
 	coefficients []float64 // √τ z η: rows 2i, 2i+1 are real and imaginary parts
-	packed       []float64 // X packed, symmetric part
-	packedAnti   []float64 // X packed, antisymmetric part
-	x            []float64 // [Re Xᵀ | Im Xᵀ], M×2M
 	columns      []float64 // the tile's columns between the two half steps
-	term, next   []float64 // columns of one walker in the series
-	products     []float64
+	exponential  exponentialArea
 }
 
 func (p *Propagator) newArea(walkers, columns int) *area {
-	m, ng := p.orbitals, len(p.Shift)
-	a := &area{
+	ng := len(p.Shift)
+	return &area{
 		deviates:     make([]float64, ng),
 		coefficients: make([]float64, 2*walkers*ng),
-		packed:       make([]float64, 2*walkers*hamiltonian.Pairs(m)),
-		x:            make([]float64, 2*m*m),
-		columns:      make([]float64, walkers*columns*2*m),
-		term:         make([]float64, columns*2*m),
-		next:         make([]float64, columns*2*m),
-		products:     make([]float64, 2*columns*2*m),
+		columns:      make([]float64, walkers*columns*2*p.orbitals),
+		exponential:  p.exponent.newArea(walkers, columns),
 	}
-	if p.antisymmetric[0] != nil {
-		a.packedAnti = make([]float64, 2*walkers*hamiltonian.Pairs(m))
-	}
-	return a
-}
-
-// bytes returns the size of one area.
-func (p *Propagator) bytes(walkers, columns int) int64 {
-	m, ng, pairs := int64(p.orbitals), int64(len(p.Shift)), int64(hamiltonian.Pairs(p.orbitals))
-	w, c := int64(walkers), int64(columns)
-	packed := 2 * w * pairs
-	if p.antisymmetric[0] != nil {
-		packed *= 2
-	}
-	return 8 * (ng + 2*w*ng + packed + 2*m*m + 2*m*c*(w+4))
 }
 
 // draw turns the deviates y and field expectations of walker i of a tile into
@@ -199,10 +172,10 @@ func (p *Propagator) advance(a *area, data []float64, count, up, down int) {
 		if n == 0 {
 			continue
 		}
-		p.fields(a, count, spin)
+		a.exponential.fields(a.coefficients, count, spin)
 		for i := range count {
-			p.unpack(a, i)
-			p.series(a, a.columns[(i*columns+first)*2*m:][:n*2*m])
+			a.exponential.unpack(i)
+			a.exponential.series(a.columns[(i*columns+first)*2*m:][:n*2*m], p.Order)
 		}
 	}
 	p.applyHalf(data, a.columns, count, up, down)
@@ -236,75 +209,6 @@ func (p *Propagator) applyHalf(dst, src []float64, count, up, down int) {
 	}
 }
 
-// fields forms X of every walker of a tile, packed.
-func (p *Propagator) fields(a *area, count, spin int) {
-	ng, width := len(p.Shift), hamiltonian.Pairs(p.orbitals)
-	if operand := p.symmetric[spin]; operand != nil {
-		operand.Mul(2*count, 1, a.coefficients, ng, 0, a.packed, width)
-	} else {
-		clear(a.packed[:2*count*width])
-	}
-	if operand := p.antisymmetric[spin]; operand != nil {
-		anti, _ := operand.Dims()
-		operand.Mul(2*count, 1, a.coefficients[ng-anti:], ng, 0, a.packedAnti, width)
-	}
-}
-
-// unpack writes [Re Xᵀ | Im Xᵀ] of walker i.
-func (p *Propagator) unpack(a *area, i int) {
-	m := p.orbitals
-	width := hamiltonian.Pairs(m)
-	for plane := range 2 {
-		row := a.packed[(2*i+plane)*width:][:width]
-		at := 0
-		for r := range m {
-			dst := a.x[r*2*m+plane*m:][:r+1]
-			src := row[at : at+r+1]
-			copy(dst, src)
-			for c, v := range src[:r] {
-				a.x[c*2*m+plane*m+r] = v
-			}
-			at += r + 1
-		}
-		if p.antisymmetric[0] == nil {
-			continue
-		}
-		row = a.packedAnti[(2*i+plane)*width:][:width]
-		at = 0
-		for r := range m {
-			for c := range r {
-				v := row[at+c]
-				a.x[r*2*m+plane*m+c] -= v
-				a.x[c*2*m+plane*m+r] += v
-			}
-			at += r + 1
-		}
-	}
-}
-
-// series replaces columns by exp(X)·columns: x_k = X x_{k−1}/k, summed.
-func (p *Propagator) series(a *area, columns []float64) {
-	m := p.orbitals
-	rows := len(columns) / m // real and imaginary rows
-	source := columns
-	for k := 1; k <= p.Order; k++ {
-		linalg.Gemm(false, false, rows, 2*m, m, 1/float64(k), source, m, a.x, 2*m, 0, a.products, 2*m)
-		for j := 0; j < rows; j += 2 {
-			ofRe, ofIm := a.products[j*2*m:(j+1)*2*m], a.products[(j+1)*2*m:(j+2)*2*m]
-			termRe, termIm := a.next[j*m:(j+1)*m], a.next[(j+1)*m:(j+2)*m]
-			sumRe, sumIm := columns[j*m:(j+1)*m], columns[(j+1)*m:(j+2)*m]
-			for q := range m {
-				re, im := ofRe[q]-ofIm[m+q], ofRe[m+q]+ofIm[q]
-				termRe[q], termIm[q] = re, im
-				sumRe[q] += re
-				sumIm[q] += im
-			}
-		}
-		a.term, a.next = a.next, a.term
-		source = a.term[:rows*m]
-	}
-}
-
 // typicalNorm returns the largest 2-norm of X in a few draws of the fields.
 func (p *Propagator) typicalNorm() float64 {
 	m := p.orbitals
@@ -317,9 +221,9 @@ func (p *Propagator) typicalNorm() float64 {
 		}
 		p.draw(a, 0, p.Shift, make([]float64, len(p.Shift)))
 		for spin := range p.spins {
-			p.fields(a, 1, spin)
-			p.unpack(a, 0)
-			largest = max(largest, norm(a.x, m))
+			a.exponential.fields(a.coefficients, 1, spin)
+			a.exponential.unpack(0)
+			largest = max(largest, norm(a.exponential.matrix(), m))
 		}
 	}
 	return largest

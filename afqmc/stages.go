@@ -48,14 +48,14 @@ func (w *Walk) Stages() (stages []Stage, walkers int) {
 		}},
 		{"field product", float64(p.spins) * 4 * count * ng * pairs, func() {
 			for spin := range p.spins {
-				p.fields(ws.area, part.Count, spin)
+				ws.area.exponential.fields(ws.area.coefficients, part.Count, spin)
 			}
 		}},
 		{"exponential", count * 8 * m * m * columns * float64(p.Order), func() {
 			for i := range part.Count {
-				p.unpack(ws.area, i)
+				ws.area.exponential.unpack(i)
 				copy(ws.area.columns, part.Walker(i))
-				p.series(ws.area, ws.area.columns[:part.Stride()])
+				ws.area.exponential.series(ws.area.columns[:part.Stride()], p.Order)
 			}
 		}},
 		{"one-body half steps", count * 8 * m * m * columns, func() {

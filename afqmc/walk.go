@@ -91,7 +91,7 @@ func NewWalk(g *trial.Guide, start trial.Orbitals, o Options) (*Walk, error) {
 		w.State.Weight[i] = 1
 	}
 	shift := g.Shift(w.walkers)
-	if w.Propagator, err = NewPropagator(h, o.TimeStep, shift); err != nil {
+	if w.Propagator, err = NewPropagator(h, o.TimeStep, shift, o.Single); err != nil {
 		return nil, err
 	}
 	w.tiles = tiles(n)

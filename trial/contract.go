@@ -75,4 +75,6 @@ type Mixed struct {
 
 	summed []float64 // density summed over spins, where both share one support
 	both   []float64 // products with real and imaginary rotated factors
+
+	singleDensity, singleFields []float32
 }

@@ -23,6 +23,16 @@ type Guide struct {
 // NewGuide binds a source to a Hamiltonian of the same sector. Tables for the
 // local energy take at most about memory bytes where the source has a choice.
 func NewGuide(h *hamiltonian.Hamiltonian, source Source, memory int64) (*Guide, error) {
+	return newGuide(h, source, memory, false)
+}
+
+// NewSingleGuide is [NewGuide] with the half-rotated factors behind ⟨v_g⟩ in
+// single precision.
+func NewSingleGuide(h *hamiltonian.Hamiltonian, source Source, memory int64) (*Guide, error) {
+	return newGuide(h, source, memory, true)
+}
+
+func newGuide(h *hamiltonian.Hamiltonian, source Source, memory int64, single bool) (*Guide, error) {
 	if s := source.Sector(); s != h.Sector {
 		return nil, fmt.Errorf("trial is for %d orbitals, %d up and %d down electrons; the hamiltonian has %d, %d and %d",
 			s.Orbitals, s.Up, s.Down, h.Orbitals, h.Up, h.Down)
@@ -33,7 +43,7 @@ func NewGuide(h *hamiltonian.Hamiltonian, source Source, memory int64) (*Guide, 
 		density = Complete(source)
 	}
 	g.density = density
-	g.rotated = NewRotated(h, density.Support())
+	g.rotated = newRotated(h, density.Support(), single)
 	able, ok := density.(EnergySource)
 	if !ok {
 		able = Complete(source)

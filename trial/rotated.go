@@ -18,11 +18,16 @@ type Rotated struct {
 	Summed bool
 
 	h       *hamiltonian.Hamiltonian
-	operand *linalg.Packed // K×ng, or K×2ng with imaginary parts in the right half
+	operand *linalg.Packed   // K×ng, or K×2ng with imaginary parts in the right half
+	single  *linalg.Packed32 // takes the place of operand in single precision
 }
 
 // NewRotated rotates the factors of h. Cost: 2·ng·n·M² flops for each spin.
-func NewRotated(h *hamiltonian.Hamiltonian, s Support) *Rotated {
+func NewRotated(h *hamiltonian.Hamiltonian, s Support) *Rotated { return newRotated(h, s, false) }
+
+// newRotated is NewRotated; single keeps the factors in single precision: ⟨v_g⟩
+// then has a relative error of about 1e-7.
+func newRotated(h *hamiltonian.Hamiltonian, s Support, single bool) *Rotated {
 	r := &Rotated{
 		Support:  s,
 		Orbitals: h.Orbitals,
@@ -50,6 +55,14 @@ func NewRotated(h *hamiltonian.Hamiltonian, s Support) *Rotated {
 			}
 		}
 		at += n
+	}
+	if single {
+		half := make([]float32, len(all))
+		for i, v := range all {
+			half[i] = float32(v)
+		}
+		r.single = linalg.Pack32(true, length, planes*r.Count, half, length)
+		return r
 	}
 	r.operand = linalg.Pack(true, length, planes*r.Count, all, length)
 	return r
@@ -111,12 +124,12 @@ func (r *Rotated) Fields(m *Mixed, count int) {
 		density, length = m.summed, half
 	}
 	if r.Support.Real() {
-		r.operand.Mul(2*count, 1, density, length, 0, m.Fields, r.Count)
+		r.multiply(m, m.Fields, 2*count, density, length, r.Count)
 		return
 	}
 	ng := r.Count
 	m.both = Grow(m.both, 2*count*2*ng)
-	r.operand.Mul(2*count, 1, density, length, 0, m.both, 2*ng)
+	r.multiply(m, m.both, 2*count, density, length, 2*ng)
 	for i := range count {
 		re, im := m.both[4*i*ng:(4*i+2)*ng], m.both[(4*i+2)*ng:(4*i+4)*ng]
 		outRe, outIm := m.Fields[2*i*ng:(2*i+1)*ng], m.Fields[(2*i+1)*ng:(2*i+2)*ng]
@@ -124,5 +137,22 @@ func (r *Rotated) Fields(m *Mixed, count int) {
 			outRe[g] = re[g] - im[ng+g]
 			outIm[g] = re[ng+g] + im[g]
 		}
+	}
+}
+
+// multiply sets dst = density·operand, rows×width, in the operand's precision.
+func (r *Rotated) multiply(m *Mixed, dst []float64, rows int, density []float64, length, width int) {
+	if r.single == nil {
+		r.operand.Mul(rows, 1, density, length, 0, dst, width)
+		return
+	}
+	m.singleDensity = Grow(m.singleDensity, rows*length)
+	m.singleFields = Grow(m.singleFields, rows*width)
+	for i := range m.singleDensity {
+		m.singleDensity[i] = float32(density[i])
+	}
+	r.single.Mul(rows, 1, m.singleDensity, length, 0, m.singleFields, width)
+	for i, v := range m.singleFields {
+		dst[i] = float64(v)
 	}
 }

@@ -44,7 +44,11 @@ func newGuidance(ctx context.Context, j *job.Job, in *inputs, s *system) (*guida
 	if err != nil {
 		return nil, err
 	}
-	if g.guide, err = trial.NewGuide(s.hamiltonian, source, afqmc.ExchangeMemory); err != nil {
+	bind := trial.NewGuide
+	if j.Projection.Precision == "single" {
+		bind = trial.NewSingleGuide
+	}
+	if g.guide, err = bind(s.hamiltonian, source, afqmc.ExchangeMemory); err != nil {
 		return nil, err
 	}
 	return g, afqmc.CheckTrial(g.guide)

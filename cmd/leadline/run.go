@@ -204,6 +204,7 @@ func projection(j *job.Job, cores int) afqmc.Options {
 		Length:        p.Length,
 		Seed:          uint64(p.Seed),
 		TargetError:   p.TargetError,
+		Single:        p.Precision == "single",
 		Cores:         cores,
 	}
 	if p.Cap != nil {
