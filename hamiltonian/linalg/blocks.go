@@ -3,12 +3,12 @@ package linalg
 import "unsafe"
 
 // Blocking, after Goto and van de Geijn, ACM Trans. Math. Softw. 34, 12 (2008)
-// and Van Zee and van de Geijn, ibid. 41, 14 (2015): a panel of B, depth×three
-// vectors (36 KiB), stays in the first-level cache while tiles of A go past it;
-// a block of A, 192×192 numbers, stays in the second. Found by measurement.
+// and Van Zee and van de Geijn, ibid. 41, 14 (2015), from memory: a panel of B,
+// 128×three vectors (24 KiB), stays in the first-level cache while tiles of A go
+// past it; a block of A, 128×128 numbers, stays in the second.
 const (
-	maxDepth   = 192
-	maxRows    = 192
+	maxDepth   = 128
+	maxRows    = 128
 	blockBytes = 480 * 8 // row of a copied block of B
 )
 
@@ -27,11 +27,12 @@ func vectors(left int) int {
 	return (left + panels - 1) / panels
 }
 
-// A small or thin product reads its operands in place. From copyRows rows on
-// and copyArea numbers in B the time to copy B in blocks is well spent.
+// Products read their operands in place; the kernels prefetch. Only from copyRows
+// rows and copyArea numbers in B on does it pay to copy B into packed blocks, by
+// a few per cent. (Measured; a transposed B must always be copied.)
 const (
-	copyRows = 192
-	copyArea = 1 << 16
+	copyRows = 448
+	copyArea = 1 << 18
 )
 
 // kernelProduct is the product for the tiers with kernels; no size is zero.
@@ -41,7 +42,7 @@ func kernelProduct[T float](t tier, m, n, k int, alpha T, a, b operand[T], beta 
 	p.cRow = ldc * size
 	step, cols := depth(k), n
 	var left, right []T
-	if b.trans || (m >= copyRows && k*n > copyArea) {
+	if b.trans || (m >= copyRows && k*n >= copyArea) {
 		buffer := takeBuffer()
 		defer giveBuffer(buffer)
 		left, right = carve[T](buffer)
@@ -73,8 +74,8 @@ func kernelProduct[T float](t tier, m, n, k int, alpha T, a, b operand[T], beta 
 	}
 }
 
-// left points p at the rows of A from i on and the columns from l on, in place
-// or copied into buffer.
+// left points p at the rows of A from i on and the columns from l on: in place,
+// or a transposed A copied into buffer if there is one.
 func (p *panel[T]) left(t tier, a operand[T], i, l int, buffer []T) {
 	size := int(unsafe.Sizeof(p.alpha))
 	tile := t.rows()
@@ -88,12 +89,6 @@ func (p *panel[T]) left(t tier, a operand[T], i, l int, buffer []T) {
 		p.a, p.aRow, p.aCol, p.aTile = unsafe.Pointer(&buffer[0]), size, tile*size, tile*p.k*size
 	case a.trans:
 		p.a, p.aRow, p.aCol, p.aTile = unsafe.Pointer(&a.data[l*a.ld+i]), size, a.ld*size, tile*size
-	case buffer != nil: // rows apart by no power of two
-		ld := (p.k+7)&^7 + 8
-		for r := range p.m {
-			copy(buffer[r*ld:], a.data[(i+r)*a.ld+l:][:p.k])
-		}
-		p.a, p.aRow, p.aCol, p.aTile = unsafe.Pointer(&buffer[0]), ld*size, size, tile*ld*size
 	default:
 		p.a, p.aRow, p.aCol, p.aTile = unsafe.Pointer(&a.data[i*a.ld+l]), a.ld*size, size, tile*a.ld*size
 	}

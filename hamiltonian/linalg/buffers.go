@@ -5,10 +5,9 @@ import (
 	"unsafe"
 )
 
-// Numbers in the two parts of a buffer: a block of A with its rows padded, and a
-// block of B.
+// Numbers in the two parts of a buffer: a block of A and a block of B.
 const (
-	leftSize  = maxRows * (maxDepth + 8)
+	leftSize  = maxRows * maxDepth
 	rightSize = maxDepth * blockBytes / 8
 )
 
