@@ -112,15 +112,9 @@ func (d *Direct) listSector() error {
 	if n := float64(strings.Count(m, h.Up)) * float64(strings.Count(m, h.Down)); n > maxMinors {
 		return fmt.Errorf("sector has %.3g determinants, at most %d for overlaps from a Clifford record", n, maxMinors)
 	}
-	place := func(s uint64, spin int) (mask uint64) {
-		for ; s != 0; s &= s - 1 {
-			mask |= 1 << h.Mode(bits.TrailingZeros64(s), spin)
-		}
-		return mask
-	}
 	for _, u := range strings.New(m, h.Up).Masks() {
 		for _, v := range strings.New(m, h.Down).Masks() {
-			d.dets = append(d.dets, place(u, 0)|place(v, 1)|h.AncillaMask())
+			d.dets = append(d.dets, h.Determinant(u, v))
 		}
 	}
 	return nil
@@ -151,7 +145,7 @@ func (d *Direct) average(a *direct, count int) {
 	factor := complex(1/d.shots, 0)
 	if row == 0 {
 		factor *= 2
-	} else if d.header.Order == record.Interleaved && interleavedSign(d.header) {
+	} else if up, down := d.header.Reference(); d.header.OrderSign(up, down) {
 		factor = -factor // conj(Ψ_r) in blocked order
 	}
 	if d.header.Ensemble.Clifford() {
@@ -254,19 +248,4 @@ func (d *Direct) measured() int {
 		n++
 	}
 	return n
-}
-
-// interleavedSign reports whether the amplitude of the reference determinant
-// changes sign between blocked and interleaved order: an odd number of pairs of
-// an α electron with a β electron in a lower orbital.
-func interleavedSign(h *record.Header) bool {
-	n := 0
-	for i, p := range h.Occupied {
-		for _, q := range h.Occupied[:i] {
-			if p%2 == 0 && q%2 == 1 {
-				n++
-			}
-		}
-	}
-	return n%2 == 1
 }

@@ -54,13 +54,8 @@ func Run(ctx context.Context, source record.Source, opt Options) (*amplitude.Est
 	m := h.Modes() / 2
 	e := &amplitude.Estimate{Up: strings.New(m, h.Up), Down: strings.New(m, h.Down)}
 	if h.Occupied != nil {
-		var ref [2]uint64
-		for p := range m {
-			for spin := range 2 {
-				ref[spin] |= h.ReferenceMask() >> h.Mode(p, spin) & 1 << p
-			}
-		}
-		e.Reference = &ref
+		up, down := h.Reference()
+		e.Reference = &[2]uint64{up, down}
 	}
 	p, err := newPlan(&h, sectorTarget(&h, e.Up, e.Down), h.ReferenceMask(), &opt)
 	if err != nil {

@@ -29,24 +29,17 @@ func Dimension(h *record.Header) float64 {
 
 // sectorTarget lists the determinants of (N_up, N_down).
 func sectorTarget(h *record.Header, up, down *strings.Table) target {
-	t := target{rowModes: h.AncillaMask()}
 	m := h.Modes() / 2
-	place := func(s uint64, spin int) (mask uint64) {
-		for ; s != 0; s &= s - 1 {
-			mask |= 1 << h.Mode(bits.TrailingZeros64(s), spin)
-		}
-		return mask
-	}
-	alpha := place(1<<m-1, 0)
-	t.rowModes |= alpha
+	all := h.Determinant(1<<m-1, 0)
+	t := target{rowModes: all}
 	if h.Order == record.Interleaved {
-		t.alpha = alpha
+		t.alpha = all &^ h.AncillaMask()
 	}
 	for _, s := range up.Masks() {
-		t.rows = append(t.rows, place(s, 0)|h.AncillaMask())
+		t.rows = append(t.rows, h.Determinant(s, 0))
 	}
 	for _, s := range down.Masks() {
-		t.cols = append(t.cols, place(s, 1))
+		t.cols = append(t.cols, h.Determinant(0, s)&^h.AncillaMask())
 	}
 	return t
 }

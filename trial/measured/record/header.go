@@ -1,5 +1,7 @@
 package record
 
+import "math/bits"
+
 // Version is the version of the format that this package reads and writes.
 const Version = 1
 
@@ -140,6 +142,16 @@ func (h *Header) ReferenceMask() uint64 {
 	return m
 }
 
+// Reference returns the up and down electrons of the reference determinant.
+func (h *Header) Reference() (up, down uint64) {
+	m := h.ReferenceMask()
+	for p := range h.Modes() / 2 {
+		up |= m >> h.Mode(p, 0) & 1 << p
+		down |= m >> h.Mode(p, 1) & 1 << p
+	}
+	return up, down
+}
+
 // Mode returns the mode of spatial orbital p (zero-based, within the measured
 // window) and spin (0 α, 1 β) in the record's own order.
 func (h *Header) Mode(p, spin int) int {
@@ -147,6 +159,33 @@ func (h *Header) Mode(p, spin int) int {
 		return 2*p + spin
 	}
 	return p + spin*h.Modes()/2
+}
+
+// Determinant returns the mask of the modes that hold the given up and down
+// electrons of the measured orbitals, and the ancilla.
+func (h *Header) Determinant(up, down uint64) uint64 {
+	mask := h.AncillaMask()
+	for spin, s := range [2]uint64{up, down} {
+		for ; s != 0; s &= s - 1 {
+			mask |= 1 << h.Mode(bits.TrailingZeros64(s), spin)
+		}
+	}
+	return mask
+}
+
+// OrderSign reports whether the amplitude of the determinant of the given up and
+// down electrons changes sign between the record's order of the spin orbitals
+// and blocked order: in interleaved order by (−1)^{number of pairs of an up
+// electron with a down electron in a lower orbital}.
+func (h *Header) OrderSign(up, down uint64) bool {
+	if h.Order != Interleaved {
+		return false
+	}
+	n := 0
+	for ; up != 0; up &= up - 1 {
+		n += bits.OnesCount64(down & (up&-up - 1))
+	}
+	return n&1 != 0
 }
 
 // Validate refuses a header that says something impossible. A Reader and a

@@ -8,7 +8,6 @@ package simulate
 import (
 	"fmt"
 	"math"
-	"math/bits"
 	"slices"
 
 	"leadline/hamiltonian/strings"
@@ -157,27 +156,11 @@ func components(st *State, h *record.Header) ([]component, error) {
 			if a == 0 {
 				continue
 			}
-			det := h.AncillaMask()
-			for p := range st.Orbitals {
-				det |= u>>p&1<<h.Mode(p, 0) | d>>p&1<<h.Mode(p, 1)
-			}
-			if h.Order == record.Interleaved && passes(u, d) {
+			if h.OrderSign(u, d) {
 				a = -a
 			}
-			list = append(list, component{det, a})
+			list = append(list, component{h.Determinant(u, d), a})
 		}
 	}
 	return list, nil
-}
-
-// passes reports whether reordering the creation operators of (up, down) from
-// blocked to interleaved order changes the sign: an odd number of pairs with the
-// down orbital below the up orbital.
-func passes(up, down uint64) bool {
-	n := 0
-	for p := down; p != 0; p &= p - 1 {
-		low := p & -p
-		n += bits.OnesCount64(up &^ (2*low - 1))
-	}
-	return n&1 != 0
 }
