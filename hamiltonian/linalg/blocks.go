@@ -5,7 +5,8 @@ import "unsafe"
 // Blocking, after Goto and van de Geijn, ACM Trans. Math. Softw. 34, 12 (2008)
 // and Van Zee and van de Geijn, ibid. 41, 14 (2015), from memory: a panel of B,
 // 128×three vectors (24 KiB), stays in the first-level cache while tiles of A go
-// past it; a block of A, 128×128 numbers, stays in the second.
+// past it; a block of A, 128×128 numbers, stays in the second. A is read where it
+// lies, whether transposed or not: copying it was measured to be slower.
 const (
 	maxDepth   = 128
 	maxRows    = 128
@@ -27,9 +28,9 @@ func vectors(left int) int {
 	return (left + panels - 1) / panels
 }
 
-// Products read their operands in place; the kernels prefetch. Only from copyRows
-// rows and copyArea numbers in B on does it pay to copy B into packed blocks, by
-// a few per cent. (Measured; a transposed B must always be copied.)
+// B, too, is read where it lies, with prefetching, unless it is transposed. Only
+// from copyRows rows and copyArea numbers in B on does it pay to copy it into
+// packed blocks, by a few per cent.
 const (
 	copyRows = 448
 	copyArea = 1 << 18
@@ -41,16 +42,12 @@ func kernelProduct[T float](t tier, m, n, k int, alpha T, a, b operand[T], beta 
 	size := int(unsafe.Sizeof(alpha))
 	p.cRow = ldc * size
 	step, cols := depth(k), n
-	var left, right []T
+	var right []T
 	if b.trans || (m >= copyRows && k*n >= copyArea) {
 		buffer := takeBuffer()
 		defer giveBuffer(buffer)
-		left, right = carve[T](buffer)
+		right = view[T](buffer)
 		cols = blockBytes / size
-	} else if a.trans && n > 6*lanes[T](t) {
-		buffer := takeBuffer()
-		defer giveBuffer(buffer)
-		left, _ = carve[T](buffer)
 	}
 	for j := 0; j < n; j += cols {
 		nb := min(cols, n-j)
@@ -67,31 +64,29 @@ func kernelProduct[T float](t tier, m, n, k int, alpha T, a, b operand[T], beta 
 			}
 			for i := 0; i < m; i += maxRows {
 				p.m = min(maxRows, m-i)
-				p.left(t, a, i, l, left)
+				p.left(t, a, i, l)
 				sweep(t, &p, nb, from, c[i*ldc+j:])
 			}
 		}
 	}
 }
 
-// left points p at the rows of A from i on and the columns from l on: in place,
-// or a transposed A copied into buffer if there is one.
-func (p *panel[T]) left(t tier, a operand[T], i, l int, buffer []T) {
+// left points p at the rows of A from i on and the columns from l on.
+func (p *panel[T]) left(t tier, a operand[T], i, l int) {
 	size := int(unsafe.Sizeof(p.alpha))
-	tile := t.rows()
-	switch {
-	case a.trans && buffer != nil: // tile by tile, each k×tile
-		for r := 0; r < p.m; r += tile {
-			for q := range p.k {
-				copy(buffer[r*p.k+q*tile:][:tile], a.data[(l+q)*a.ld+i+r:][:min(tile, p.m-r)])
-			}
-		}
-		p.a, p.aRow, p.aCol, p.aTile = unsafe.Pointer(&buffer[0]), size, tile*size, tile*p.k*size
-	case a.trans:
-		p.a, p.aRow, p.aCol, p.aTile = unsafe.Pointer(&a.data[l*a.ld+i]), size, a.ld*size, tile*size
-	default:
-		p.a, p.aRow, p.aCol, p.aTile = unsafe.Pointer(&a.data[i*a.ld+l]), a.ld*size, size, tile*a.ld*size
+	p.a, p.aRow, p.aCol = unsafe.Pointer(&a.data[at(a, i, l)]), a.ld*size, size
+	if a.trans {
+		p.aRow, p.aCol = p.aCol, p.aRow
 	}
+	p.aTile = t.rows() * p.aRow
+}
+
+// at returns the place of element (i, j) of op(A).
+func at[T float](a operand[T], i, j int) int {
+	if a.trans {
+		return j*a.ld + i
+	}
+	return i*a.ld + j
 }
 
 // source is a block of B as the kernels read it: rows ld apart or, with ld zero,

@@ -5,14 +5,8 @@ import (
 	"unsafe"
 )
 
-// Numbers in the two parts of a buffer: a block of A and a block of B.
-const (
-	leftSize  = maxRows * maxDepth
-	rightSize = maxDepth * blockBytes / 8
-)
-
-// buffer is memory for copies of blocks of A and B.
-type buffer [leftSize + rightSize]float64
+// buffer is memory for the copy of a block of B.
+type buffer [maxDepth * blockBytes / 8]float64
 
 // buffers holds the buffers not in use: as many as there ever were concurrent
 // products.
@@ -38,12 +32,10 @@ func giveBuffer(b *buffer) {
 	buffers.free = append(buffers.free, b)
 }
 
-// carve views a buffer as a block of A and a block of B.
-func carve[T float](b *buffer) (left, right []T) {
+// view returns a buffer as numbers of either precision.
+func view[T float](b *buffer) []T {
 	var x T
-	per := 8 / int(unsafe.Sizeof(x))
-	all := unsafe.Slice((*T)(unsafe.Pointer(b)), len(b)*per)
-	return all[: leftSize*per : leftSize*per], all[leftSize*per:]
+	return unsafe.Slice((*T)(unsafe.Pointer(b)), int(unsafe.Sizeof(*b)/unsafe.Sizeof(x)))
 }
 
 // workspace is memory for small factorisations.

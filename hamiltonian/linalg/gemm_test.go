@@ -124,13 +124,6 @@ func reference[T float](a, b operand[T], m, n, k int) (value, size []float64) {
 	return value, size
 }
 
-func at[T float](a operand[T], i, j int) int {
-	if a.trans {
-		return j*a.ld + i
-	}
-	return i*a.ld + j
-}
-
 func randomOperand[T float](rng *rand.Rand, rows, cols int) operand[T] {
 	a := operand[T]{trans: rng.IntN(2) == 0}
 	if a.trans {

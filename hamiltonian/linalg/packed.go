@@ -107,7 +107,7 @@ func (p *packed[T]) multiply(m int, alpha T, a []T, lda int, beta T, c []T, ldc 
 				if l == 0 {
 					call.beta = beta
 				}
-				call.left(p.tier, operand[T]{data: a, ld: lda}, i, l, nil)
+				call.left(p.tier, operand[T]{data: a, ld: lda}, i, l)
 				sweep(p.tier, &call, min(cols, p.n-j), source[T]{data: p.data[j*p.k:], depth: p.k, skip: l}, c[i*ldc+j:])
 			}
 		}
