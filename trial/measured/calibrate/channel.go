@@ -27,10 +27,9 @@ type Channel struct {
 	// Kept is f: one number for the Clifford group, 1/(2^n+1) without noise;
 	// n+1 numbers for matchgates, C(n,k)/C(2n,2k) without noise.
 	Kept []float64
-	// Batches holds the estimates of consecutive batches of settings, each
-	// with its number of shots.
-	Batches [][]float64
-	Weights []float64
+	// Replicas holds the same numbers with one batch of settings left out at a
+	// time, for the jackknife.
+	Replicas [][]float64
 }
 
 // Ideal returns the channel of a noiseless measurement of n qubits.
@@ -56,10 +55,10 @@ func Estimate(source record.Source, batches int) (*Channel, error) {
 		return nil, fmt.Errorf("calibration record has %d settings, expected at least 2 in a file that ends with its totals", total)
 	}
 	batches = min(batches, int(total))
-	c := &Channel{Header: h, Batches: make([][]float64, batches), Weights: make([]float64, batches)}
 	size := len(Ideal(h.Ensemble, h.Qubits))
-	for b := range c.Batches {
-		c.Batches[b] = make([]float64, size)
+	sums, shots := make([][]float64, batches), make([]float64, batches)
+	for b := range sums {
+		sums[b] = make([]float64, size)
 	}
 	sampler := newSampler(h)
 	var s record.Setting
@@ -73,56 +72,57 @@ func Estimate(source record.Source, batches int) (*Channel, error) {
 			return nil, fmt.Errorf("calibration record has more than the %d settings of its end mark", total)
 		}
 		b := int(i * int64(batches) / total)
-		if err := sampler.add(c.Batches[b], &s); err != nil {
+		if err := sampler.add(sums[b], &s); err != nil {
 			return nil, err
 		}
-		c.Weights[b] += float64(s.Count())
+		shots[b] += float64(s.Count())
 	}
-	c.Digest = st.Digest()
-	c.Kept = make([]float64, size)
-	sum := 0.0
-	for b, batch := range c.Batches {
-		for k := range batch {
-			c.Kept[k] += batch[k]
-			batch[k] /= c.Weights[b]
+	c := &Channel{Header: h, Digest: st.Digest(), Kept: make([]float64, size)}
+	all := 0.0
+	for b, sum := range sums {
+		for k, v := range sum {
+			c.Kept[k] += v
 		}
-		sum += c.Weights[b]
-		c.Shots += int64(c.Weights[b])
+		all += shots[b]
 	}
+	for b, sum := range sums {
+		replica := make([]float64, size)
+		for k, v := range sum {
+			replica[k] = (c.Kept[k] - v) / (all - shots[b])
+		}
+		c.Replicas = append(c.Replicas, replica)
+	}
+	c.Shots = int64(all)
 	for k := range c.Kept {
-		c.Kept[k] /= sum
-		if !(c.Kept[k] > 0) {
-			return nil, fmt.Errorf("calibration keeps %.3g of degree %d: too few shots, or not a record of the vacuum", c.Kept[k], 2*k)
+		c.Kept[k] /= all
+	}
+	for _, f := range append([][]float64{c.Kept}, c.Replicas...) {
+		for k, v := range f {
+			if !(v > 0) {
+				return nil, fmt.Errorf("calibration keeps %.3g of degree %d: too few shots, or not a record of the vacuum", v, 2*k)
+			}
 		}
 	}
 	return c, nil
 }
 
-// Without returns the channel estimated from all batches but one, the replica
-// of the jackknife.
-func (c *Channel) Without(batch int) []float64 {
-	sum := 0.0
-	for _, w := range c.Weights {
-		sum += w
-	}
-	f := make([]float64, len(c.Kept))
-	w := c.Weights[batch]
-	for k := range f {
-		f[k] = (sum*c.Kept[k] - w*c.Batches[batch][k]) / (sum - w)
-	}
-	return f
-}
-
 // Errors returns one standard error of each number by the jackknife.
 func (c *Channel) Errors() []float64 {
-	se := make([]float64, len(c.Kept))
-	n := float64(len(c.Batches))
-	for b := range c.Batches {
-		for k, v := range c.Without(b) {
-			se[k] += (v - c.Kept[k]) * (v - c.Kept[k]) * (n - 1) / n
-		}
-	}
+	return spread(c.Kept, c.Replicas)
+}
+
+// spread is the jackknife error of values from their replicas.
+func spread(values []float64, replicas [][]float64) []float64 {
+	se := make([]float64, len(values))
+	n := float64(len(replicas))
 	for k := range se {
+		mean := 0.0
+		for _, r := range replicas {
+			mean += r[k] / n
+		}
+		for _, r := range replicas {
+			se[k] += (r[k] - mean) * (r[k] - mean) * (n - 1) / n
+		}
 		se[k] = math.Sqrt(se[k])
 	}
 	return se

@@ -194,10 +194,10 @@ func (p *plan) accumulateChunk(acc []float64) func(*chunk) error {
 // and shows in everything computed from them.
 func (p *plan) carryCalibration(ctx context.Context, source record.Source, e *amplitude.Estimate, c *calibrate.Channel) error {
 	n := len(e.Batches)
-	if len(c.Batches) < n {
-		return fmt.Errorf("calibration has %d batches, expected the record's %d", len(c.Batches), n)
+	if len(c.Replicas) < n {
+		return fmt.Errorf("calibration has %d batches, expected the record's %d", len(c.Replicas), n)
 	}
-	m := len(c.Batches)
+	m := len(c.Replicas)
 	full := matchgate.Inverse(c.Kept)
 	// shift[b][k]: pseudo-values of batch b, centred; batches of the
 	// calibration beyond the record's join in turn.
@@ -207,7 +207,7 @@ func (p *plan) carryCalibration(ctx context.Context, source record.Source, e *am
 		shift[b] = make([]float64, len(full))
 	}
 	for b := range m {
-		g := matchgate.Inverse(c.Without(b))
+		g := matchgate.Inverse(c.Replicas[b])
 		for k := range full {
 			shift[b*n/m][k] += float64(m-1) * (full[k] - g[k]) * float64(n) / float64(m)
 		}

@@ -459,6 +459,44 @@ func factor(e record.Ensemble, n, electrons int, rates []simulate.Flip) float64 
 	return kappa
 }
 
+// TestCalibrationErrorIsCarried corrects reference-row records of a noisy device
+// with short calibrations: over many pairs of records the deviation of an
+// amplitude must fit its error, most of which comes from the calibration.
+func TestCalibrationErrorIsCarried(t *testing.T) {
+	rates := make([]simulate.Flip, 4)
+	for j := range rates {
+		rates[j] = simulate.Flip{Zero: 0.02, One: 0.05}
+	}
+	st := randomState(2, 1, 1, 7)
+	ref := &[2]uint64{1, 1}
+	for _, e := range []record.Ensemble{record.Lagrangian, record.Matching} {
+		const records = 40
+		pulls, share := 0.0, 0.0
+		for seed := range uint64(records) {
+			opt := simulate.Options{Ensemble: e, Reference: ref, Settings: 2000, ShotsPerSetting: 20, Seed: 300 + seed, Readout: rates}
+			source := simulated(t, st, opt)
+			opt.Calibration, opt.Settings, opt.ShotsPerSetting, opt.Seed = true, 320, 1, 700+seed
+			c, err := calibrate.Estimate(simulated(t, st, opt), 32)
+			if err != nil {
+				t.Fatal(err)
+			}
+			est := run(t, source, collapse.Options{Calibration: c})
+			plain := run(t, source, collapse.Options{})
+			// Part of the amplitude of the reference itself, the largest.
+			got, se := real(est.Mean()[0]), real(est.Errors()[0])
+			want := real(st.Amplitudes[0] * cmplx.Conj(st.Amplitudes[0]))
+			pulls += (got - want) * (got - want) / (se * se) / records
+			share += real(plain.Errors()[0]) / se / records
+		}
+		if math.Abs(pulls-1) > 0.7 {
+			t.Errorf("%s: mean square pull %.2f, want 1", e, pulls)
+		}
+		if share > 0.7 {
+			t.Errorf("%s: the error without calibration is %.2f of the whole: the test tests nothing", e, share)
+		}
+	}
+}
+
 func TestRefusals(t *testing.T) {
 	st := randomState(3, 2, 1, 1)
 	h, settings, err := simulate.Settings(ctx, st, simulate.Options{Ensemble: record.Matching, Settings: 40, Seed: 3})
