@@ -22,16 +22,30 @@ const (
 	benchWalkers  = 32
 )
 
+// benchHamiltonian has levels 0.1 apart in the benchmarks' orbitals and weak
+// random factors, so that walkers stay near the first determinant.
 func benchHamiltonian(electrons int) *hamiltonian.Hamiltonian {
 	h := trialtest.RandomHamiltonian(hamiltonian.Sector{Orbitals: benchOrbitals, Up: electrons, Down: electrons}, benchFactors, 0, false, 1)
 	for g := range h.Factors.Sign {
 		h.Factors.Sign[g] = 1
 	}
 	for k := range h.Factors.Packed[0] {
-		h.Factors.Packed[0][k] *= 0.1
+		h.Factors.Packed[0][k] *= 0.02
+	}
+	columns := benchColumns()
+	for p := range benchOrbitals {
+		for q := range p + 1 {
+			var v float64
+			for k := range benchOrbitals {
+				v += 0.1 * float64(k) * columns.At(p, k) * columns.At(q, k)
+			}
+			h.OneBody[0].SetSym(p, q, v)
+		}
 	}
 	return h
 }
+
+func benchColumns() *mat.Dense { return randomRotation(benchOrbitals, rand.New(rand.NewPCG(7, 8))) }
 
 // benchExpansion has e electrons in as many active orbitals, 10 electrons of each
 // spin in all; with n > 0 only n determinants, those that an amplitude falling
@@ -56,7 +70,7 @@ func benchExpansion(e, n int, symmetric bool) *Expansion {
 	}
 	c[0] = 1
 	out := FromMatrix(benchOrbitals, 10-e/2, table, table, c, nil)
-	out.Columns = randomRotation(benchOrbitals, rng)
+	out.Columns = benchColumns()
 	if n > 0 {
 		out = out.Truncate(n)
 	}

@@ -19,11 +19,18 @@ type doubles interface {
 
 type doublesArea struct {
 	gathered []float64 // rows of C†
-	excited  []float64 // E_bj d
+	excited  []float64 // E_bj d of all walkers and excitations
 	products []float64
-	half     []float64 // C† E_bj d: rows (walker, part, excitation)
+	half     []float64 // C† E_bj d: rows (excitation, walker, part)
 	full     []float64 // E_ai d of one walker: rows (part, excitation)
-	members  []int32
+	order    []int32   // walkers sorted by reference
+	groups   []group
+}
+
+// group is a range of the sorted walkers that have one reference.
+type group struct {
+	frame    *frame
+	from, to int
 }
 
 func (s *Source) newDoubles() doubles {
@@ -84,89 +91,156 @@ func newMoves(active, electrons int) []moves {
 	return all
 }
 
-// halfMemory bounds the intermediate of a block of up strings, in numbers.
-const halfMemory = 1 << 18
+// A block of up strings is a multiple of blockUnit wide, three vectors of the
+// product kernel, and about so that the intermediate has halfMemory numbers.
+const (
+	blockUnit  = 24
+	halfMemory = 1 << 18
+)
 
 func (d *denseDoubles) mixed(dst []float64, a *doublesArea, up, down *form, count int) {
 	s := d.s
 	nUp := d.c.strings[hamiltonian.Up]
 	xUp, xDown := s.spaces[0].excitations(), s.spaces[1].excitations()
-	clear(dst[:count*4*xUp*xDown])
-	blocks := min(nUp, max(1, (nUp*2*xDown*count+halfMemory-1)/halfMemory))
-	for block := range blocks {
-		from, to := block*nUp/blocks, (block+1)*nUp/blocks
+	a.sortByReference(down, count)
+	d.excite(a, down)
+	step := max(1, halfMemory/(2*xDown*count*blockUnit)) * blockUnit
+	for from := 0; from < nUp; from += step {
+		to := min(nUp, from+step)
 		width := to - from
-		a.half = trial.Grow(a.half, count*2*xDown*width)
+		a.half = trial.Grow(a.half, xDown*count*2*width)
 		a.full = trial.Grow(a.full, 2*xUp*width)
 		for b := range s.active {
 			for j := range s.active {
 				if b != j {
-					d.pair(a, down, count, b, j, from, to)
+					d.pair(a, count, b, j, from, to)
 				}
 			}
 		}
-		for i := range count {
-			if up.frames[i] == nil || down.frames[i] == nil {
-				continue
+		beta := 1.0
+		if from == 0 {
+			beta = 0
+		}
+		for _, g := range a.groups {
+			for k := g.from; k < g.to; k++ {
+				i := int(a.order[k])
+				out := dst[i*4*xUp*xDown:][:4*xUp*xDown]
+				if up.frames[i] == nil {
+					continue
+				}
+				d.exciteOne(a.full, up, i, from, to)
+				for part := range 2 {
+					linalg.Gemm(false, true, xDown, 2*xUp, width, 1, a.half[(2*k+part)*width:], 2*count*width,
+						a.full, width, beta, out[part*xDown*2*xUp:], 2*xUp)
+				}
 			}
-			d.excite(a.full, up, i, from, to)
-			linalg.Gemm(false, true, 2*xDown, 2*xUp, width, 1, a.half[i*2*xDown*width:], width, a.full, width, 1, dst[i*4*xUp*xDown:], 2*xUp)
 		}
 	}
 }
 
-// pair sets the rows of a.half for E_bj, up strings from ≤ I < to.
-func (d *denseDoubles) pair(a *doublesArea, down *form, count, b, j, from, to int) {
-	s := d.s
-	nUp, nDown, planes := d.c.strings[0], d.c.strings[1], d.c.planes
-	width, x, ne := to-from, s.spaces[1].excitations(), s.spaces[1].electrons
-	a.members = a.members[:0]
+// sortByReference sets order and groups for the walkers with a reference.
+func (a *doublesArea) sortByReference(down *form, count int) {
+	a.order, a.groups = a.order[:0], a.groups[:0]
 	for i := range count {
-		if f := down.frames[i]; f != nil && f.reference>>j&1 == 1 && f.reference>>b&1 == 0 {
-			a.members = append(a.members, int32(i))
+		if down.frames[i] != nil {
+			a.order = append(a.order, int32(i))
 		}
 	}
-	if len(a.members) == 0 {
-		return
-	}
-	list := &d.moves[1][b*s.active+j]
-	length := len(list.to)
-	a.excited = trial.Grow(a.excited, 2*len(a.members)*length)
-	for k, i := range a.members {
-		for part := range 2 {
-			from, to := down.strings[(2*int(i)+part)*nDown:][:nDown], a.excited[(2*k+part)*length:][:length]
-			for l, sign := range list.sign {
-				to[l] = sign * from[list.from[l]]
-			}
+	slices.SortStableFunc(a.order, func(x, y int32) int {
+		rx, ry := down.frames[x].reference, down.frames[y].reference
+		switch {
+		case rx < ry:
+			return -1
+		case rx > ry:
+			return 1
 		}
-	}
-	a.gathered = trial.Grow(a.gathered, length*planes*width)
-	for l, row := range list.to {
-		for plane := range planes {
-			copy(a.gathered[(l*planes+plane)*width:][:width], d.c.rows[(plane*nDown+int(row))*nUp+from:])
-		}
-	}
-	a.products = trial.Grow(a.products, 2*len(a.members)*planes*width)
-	linalg.Gemm(false, false, 2*len(a.members), planes*width, length, 1, a.excited, length, a.gathered, planes*width, 0, a.products, planes*width)
-	for k, i := range a.members {
+		return 0
+	})
+	for k, i := range a.order {
 		f := down.frames[i]
-		at := (f.position[b]-ne)*ne + f.position[j]
-		re, im := a.half[(2*int(i)*x+at)*width:][:width], a.half[((2*int(i)+1)*x+at)*width:][:width]
-		upper, lower := a.products[2*k*planes*width:][:planes*width], a.products[(2*k+1)*planes*width:][:planes*width]
-		if planes == 1 {
-			copy(re, upper)
-			copy(im, lower)
+		if last := len(a.groups) - 1; last >= 0 && a.groups[last].frame.reference == f.reference {
+			a.groups[last].to = k + 1
 			continue
 		}
-		for q := range re {
-			re[q] = upper[q] - lower[width+q]
-			im[q] = upper[width+q] + lower[q]
+		a.groups = append(a.groups, group{frame: f, from: k, to: k + 1})
+	}
+}
+
+// excite sets a.excited to E_bj d_down for the excitations of each walker's
+// reference: blocks (group, excitation), rows (walker, part), one number for each
+// string with b and without j.
+func (d *denseDoubles) excite(a *doublesArea, down *form) {
+	s := d.s
+	space := s.spaces[hamiltonian.Down]
+	n, ne, length := d.c.strings[1], space.electrons, space.single()
+	a.excited = trial.Grow(a.excited, len(a.order)*space.excitations()*2*length)
+	at := 0
+	for _, g := range a.groups {
+		for _, particle := range g.frame.orbital[ne:] {
+			for _, hole := range g.frame.orbital[:ne] {
+				list := &d.moves[1][particle*s.active+hole]
+				for k := g.from; k < g.to; k++ {
+					for part := range 2 {
+						from, to := down.strings[(2*int(a.order[k])+part)*n:][:n], a.excited[at:][:length]
+						for l, sign := range list.sign {
+							to[l] = sign * from[list.from[l]]
+						}
+						at += length
+					}
+				}
+			}
 		}
 	}
 }
 
-// excite writes E_ai d_up of walker i for the strings from ≤ I < to.
-func (d *denseDoubles) excite(dst []float64, up *form, i, from, to int) {
+// single returns the number of strings with one given orbital and without
+// another.
+func (s *space) single() int { return strings.Count(s.active-2, s.electrons-1) }
+
+// pair sets the rows of a.half for E_bj, up strings from ≤ I < to.
+func (d *denseDoubles) pair(a *doublesArea, count, b, j, from, to int) {
+	s := d.s
+	space := s.spaces[hamiltonian.Down]
+	nUp, nDown, planes := d.c.strings[0], d.c.strings[1], d.c.planes
+	width, x, ne, length := to-from, space.excitations(), space.electrons, space.single()
+	gathered := false
+	for _, g := range a.groups {
+		if g.frame.reference>>j&1 == 0 || g.frame.reference>>b&1 == 1 {
+			continue
+		}
+		if !gathered {
+			gathered = true
+			a.gathered = trial.Grow(a.gathered, length*planes*width)
+			for l, row := range d.moves[1][b*s.active+j].to {
+				for plane := range planes {
+					copy(a.gathered[(l*planes+plane)*width:][:width], d.c.rows[(plane*nDown+int(row))*nUp+from:])
+				}
+			}
+		}
+		excitation := (g.frame.position[b]-ne)*ne + g.frame.position[j]
+		members := g.to - g.from
+		left := a.excited[(g.from*x+excitation*members)*2*length:]
+		half := a.half[(excitation*count+g.from)*2*width:]
+		if planes == 1 {
+			linalg.Gemm(false, false, 2*members, width, length, 1, left, length, a.gathered, width, 0, half, width)
+			continue
+		}
+		a.products = trial.Grow(a.products, 4*members*width)
+		linalg.Gemm(false, false, 2*members, 2*width, length, 1, left, length, a.gathered, 2*width, 0, a.products, 2*width)
+		for k := range members {
+			re, im := half[2*k*width:][:width], half[(2*k+1)*width:][:width]
+			upper, lower := a.products[4*k*width:][:2*width], a.products[(4*k+2)*width:][:2*width]
+			for q := range re {
+				re[q] = upper[q] - lower[width+q]
+				im[q] = upper[width+q] + lower[q]
+			}
+		}
+	}
+}
+
+// exciteOne writes E_ai d_up of walker i for the strings from ≤ I < to, rows
+// (part, excitation).
+func (d *denseDoubles) exciteOne(dst []float64, up *form, i, from, to int) {
 	s := d.s
 	n, width, x, ne := d.c.strings[0], to-from, s.spaces[0].excitations(), s.spaces[0].electrons
 	f := up.frames[i]
@@ -176,9 +250,11 @@ func (d *denseDoubles) excite(dst []float64, up *form, i, from, to int) {
 		for h, hole := range f.orbital[:ne] {
 			list := &d.moves[0][particle*s.active+hole]
 			first, _ := slices.BinarySearch(list.to, int32(from))
+			last, _ := slices.BinarySearch(list.to, int32(to))
 			dRe, dIm := dst[(p*ne+h)*width:][:width], dst[(x+p*ne+h)*width:][:width]
-			for k := first; k < len(list.to) && int(list.to[k]) < to; k++ {
-				at, source, sign := int(list.to[k])-from, list.from[k], list.sign[k]
+			signs, sources := list.sign[first:last], list.from[first:last]
+			for k, t := range list.to[first:last] {
+				at, source, sign := int(t)-from, sources[k], signs[k]
 				dRe[at], dIm[at] = sign*re[source], sign*im[source]
 			}
 		}
@@ -198,63 +274,98 @@ func (d *sparseDoubles) mixed(dst []float64, a *doublesArea, up, down *form, cou
 	nUp := d.c.strings[hamiltonian.Up]
 	xUp, xDown := s.spaces[0].excitations(), s.spaces[1].excitations()
 	a.half, a.full = trial.Grow(a.half, 2*xDown*nUp), trial.Grow(a.full, 2*xUp*nUp)
-	list := &d.c.lists[hamiltonian.Down]
 	for i := range count {
 		if up.frames[i] == nil || down.frames[i] == nil {
 			continue
 		}
-		clear(a.half)
-		s.spaces[1].excitationsOf(down, i, func(string, excitation int, v complex128) {
-			re, im := a.half[excitation*nUp:][:nUp], a.half[(xDown+excitation)*nUp:][:nUp]
-			from, to := list.start[string], list.start[string+1]
-			values := list.re[from:to]
-			for l, k := range list.index[from:to] {
-				re[k] += values[l] * real(v)
-				im[k] += values[l] * imag(v)
-			}
-			if list.im != nil {
-				values := list.im[from:to]
-				for l, k := range list.index[from:to] {
-					re[k] -= values[l] * imag(v)
-					im[k] += values[l] * real(v)
-				}
-			}
-		})
-		clear(a.full)
-		s.spaces[0].excitationsOf(up, i, func(string, excitation int, v complex128) {
-			a.full[excitation*nUp+string], a.full[(xUp+excitation)*nUp+string] = real(v), imag(v)
-		})
+		d.half(a.half, down, i)
+		s.spaces[0].exciteAll(a.full, up, i)
 		linalg.Gemm(false, true, 2*xDown, 2*xUp, nUp, 1, a.half, nUp, a.full, nUp, 0, dst[i*4*xUp*xDown:], 2*xUp)
 	}
 }
 
-// excitationsOf calls f with (E_ai d)_I for every string I of walker i and every
-// excitation a·ne + i that leads to it.
-func (s *space) excitationsOf(form *form, i int, f func(string, excitation int, v complex128)) {
-	frame := form.frames[i]
-	m := form.minors[i*s.minors():][:s.minors()]
+// half writes C† E_bj d_down of walker i, rows (part, excitation).
+func (d *sparseDoubles) half(dst []float64, down *form, i int) {
+	space := d.s.spaces[hamiltonian.Down]
+	nUp, x, ne := d.c.strings[hamiltonian.Up], space.excitations(), space.electrons
+	list := &d.c.lists[hamiltonian.Down]
+	frame := down.frames[i]
+	m := down.minors[i*space.minors():][:space.minors()]
+	clear(dst[:2*x*nUp])
 	for number, at := range frame.place {
-		k := 0
-		for s.offset[k+1] <= int(at) {
-			k++
+		from, to := list.start[number], list.start[number+1]
+		index, values := list.index[from:to], list.re[from:to]
+		k, p, h := space.locate(int(at))
+		if k == 0 || len(index) == 0 {
+			continue
 		}
+		particles, holes := &space.particles.levels[k], &space.holes.levels[k]
+		below := space.holes.count(k - 1)
+		for r := range k {
+			row := m[space.offset[k-1]+int(particles.less[p*k+r])*below:][:below]
+			sign := frame.sign[number]
+			if r%2 == 1 {
+				sign = -sign
+			}
+			for c := range k {
+				v := row[holes.less[h*k+c]]
+				vRe, vIm := sign*real(v), sign*imag(v)
+				sign = -sign
+				excitation := int(particles.member[p*k+r])*ne + int(holes.member[h*k+c])
+				re, im := dst[excitation*nUp:][:nUp], dst[(x+excitation)*nUp:][:nUp]
+				for l, q := range index {
+					f := values[l]
+					re[q] += f * vRe
+					im[q] += f * vIm
+				}
+				if list.im != nil {
+					values := list.im[from:to]
+					for l, q := range index {
+						f := values[l]
+						re[q] -= f * vIm
+						im[q] += f * vRe
+					}
+				}
+			}
+		}
+	}
+}
+
+// exciteAll writes E_ai d of walker i for every string, rows (part, excitation).
+func (s *space) exciteAll(dst []float64, form *form, i int) {
+	frame := form.frames[i]
+	n, x := len(s.masks), s.excitations()
+	m := form.minors[i*s.minors():][:s.minors()]
+	clear(dst[:2*x*n])
+	for number, at := range frame.place {
+		k, p, h := s.locate(int(at))
 		if k == 0 {
 			continue
 		}
-		width, below := s.holes.count(k), s.holes.count(k-1)
-		p, h := (int(at)-s.offset[k])/width, (int(at)-s.offset[k])%width
 		particles, holes := &s.particles.levels[k], &s.holes.levels[k]
-		for x := range k {
-			row := m[s.offset[k-1]+int(particles.less[p*k+x])*below:][:below]
+		below := s.holes.count(k - 1)
+		for r := range k {
+			row := m[s.offset[k-1]+int(particles.less[p*k+r])*below:][:below]
 			sign := frame.sign[number]
-			if x%2 == 1 {
+			if r%2 == 1 {
 				sign = -sign
 			}
-			for y := range k {
-				v := row[holes.less[h*k+y]]
-				f(number, int(particles.member[p*k+x])*s.electrons+int(holes.member[h*k+y]), complex(sign*real(v), sign*imag(v)))
+			first := int(particles.member[p*k+r]) * s.electrons
+			for c := range k {
+				v := row[holes.less[h*k+c]]
+				to := (first+int(holes.member[h*k+c]))*n + number
+				dst[to], dst[x*n+to] = sign*real(v), sign*imag(v)
 				sign = -sign
 			}
 		}
 	}
+}
+
+// locate returns size, particles and holes of a minor.
+func (s *space) locate(at int) (k, p, h int) {
+	for s.offset[k+1] <= at {
+		k++
+	}
+	width := s.holes.count(k)
+	return k, (at - s.offset[k]) / width, (at - s.offset[k]) % width
 }

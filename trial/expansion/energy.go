@@ -270,22 +270,27 @@ func (e *energies) like(a *energyArea, one *side, i, spin int) complex128 {
 	np := space.active - n
 	w, v := one.gradient[i*x:][:x], a.v[:x*x]
 	var sum complex128
-	for p := range x {
-		ai := p / n * n
-		var row complex128
-		for q := range x {
-			b, j := q/n*n, q%n
-			row += v[p*x+q] * (w[ai+j]*w[b+p%n] - w[p]*w[q])
+	for p := range np {
+		wp := w[p*n:][:n]
+		for k, wk := range wp {
+			row := v[(p*n+k)*x:][:x]
+			for b := range np {
+				wb, vb := w[b*n:][:n], row[b*n:][:n]
+				var direct, exchange complex128
+				for j, vv := range vb {
+					direct += vv * wb[j]
+					exchange += vv * wp[j]
+				}
+				sum += wb[k]*exchange - wk*direct
+			}
 		}
-		sum += row
 	}
 	f := one.frames[i]
 	if f.levels < 2 {
 		return sum
 	}
 	a.second = trial.Grow(a.second, space.pairPart.count*space.pairHole.count)
-	clear(a.second)
-	a.twice = trial.Grow(a.twice, 2*space.widest())
+	a.twice = trial.Grow(a.twice, 2*space.minors())
 	m := one.minors[i*space.minors():][:space.minors()]
 	length := 2 * len(space.masks)
 	space.adjoint(one.adjoint, one.dual[i*length:][:length], f)

@@ -1,5 +1,7 @@
 package expansion
 
+import "slices"
+
 // computeMinors sets m to det θ[P,H] for all P, H of up to levels members;
 // theta is particles × holes, row-major. Expansion along the last row,
 //
@@ -87,70 +89,78 @@ func expandBack(w, below, g, row, from []complex128, member, less []int32, k int
 // hold the pair and what is left of them.
 type pairs struct {
 	count  int // n(n−1)/2; the pair i<j has number j(j−1)/2 + i
-	levels [][]pairTerm
-	start  [][]int32 // first term of each pair, and one more entry
+	levels []pairLevel
 }
 
-// pairTerm is a subset that holds a pair.
-type pairTerm struct {
-	with, without int32 // numbers with the pair and without it, two sizes down
-	odd           int32 // 1 where the two positions add up to an odd number
+// pairLevel holds C(n−2,k−2) terms for each pair.
+type pairLevel struct {
+	terms   int
+	with    []int32 // number of the subset
+	without []int32 // 2·(number without the pair, two sizes down), plus 1 where the two positions add up to an odd number
 }
 
 func pairNumber(i, j int) int { return j*(j-1)/2 + i }
 
 func newPairs(s *subsets) *pairs {
-	out := &pairs{count: s.n * (s.n - 1) / 2, levels: make([][]pairTerm, len(s.levels)), start: make([][]int32, len(s.levels))}
+	out := &pairs{count: s.n * (s.n - 1) / 2, levels: make([]pairLevel, len(s.levels))}
 	for k := 2; k < len(s.levels); k++ {
 		l, next := &s.levels[k], &s.levels[k-1]
-		lists := make([][]pairTerm, out.count)
+		with, without := make([][]int32, out.count), make([][]int32, out.count)
 		for r := range s.count(k) {
 			for y := range k {
 				for x := range y {
 					pair := pairNumber(int(l.member[r*k+x]), int(l.member[r*k+y]))
 					one := int(l.less[r*k+y]) // without the later member; the earlier keeps its place
-					lists[pair] = append(lists[pair], pairTerm{with: int32(r), without: next.less[one*(k-1)+x], odd: int32((x + y) & 1)})
+					with[pair] = append(with[pair], int32(r))
+					without[pair] = append(without[pair], 2*next.less[one*(k-1)+x]+int32((x+y)&1))
 				}
 			}
 		}
-		for _, list := range lists {
-			out.start[k] = append(out.start[k], int32(len(out.levels[k])))
-			out.levels[k] = append(out.levels[k], list...)
-		}
-		out.start[k] = append(out.start[k], int32(len(out.levels[k])))
+		o := &out.levels[k]
+		o.terms = len(with[0])
+		o.with, o.without = slices.Concat(with...), slices.Concat(without...)
 	}
 	return out
 }
 
-// secondDerivatives adds Σ g(P,H) ∂²m(P,H)/∂θ_ai∂θ_bj to d for all a<b and i<j,
-// pairs of particles × pairs of holes; twice holds work space. The others follow
-// from antisymmetry in a, b and in i, j. Complex multiplications:
-// Σ_k C(n_h,k)·C(n_p,k)·(k(k−1)/2)².
+// secondDerivatives sets d to Σ g(P,H) ∂²m(P,H)/∂θ_ai∂θ_bj for all a<b and i<j,
+// pairs of particles × pairs of holes; twice is work space for two numbers for
+// each minor. The others follow from antisymmetry in a, b and in i, j. Complex
+// multiplications: Σ_k C(n_h,k)·C(n_p,k)·(k(k−1)/2)².
 func (s *space) secondDerivatives(d, g, m []complex128, levels int, twice []complex128) {
+	pairs := s.pairHole.count
+	clear(d[:s.pairPart.count*pairs])
+	if levels < 2 {
+		return
+	}
+	twice = twice[:2*s.offset[levels-1]]
+	for i := range len(twice) / 2 {
+		twice[2*i], twice[2*i+1] = m[i], -m[i]
+	}
 	for k := 2; k <= levels; k++ {
 		width, below := s.holes.count(k), s.holes.count(k-2)
-		twice := twice[:2*width]
-		holes, starts := s.pairHole.levels[k], s.pairHole.start[k]
-		particles := s.pairPart.levels[k]
+		h, p := &s.pairHole.levels[k], &s.pairPart.levels[k]
 		for ab := range s.pairPart.count {
-			row := d[ab*s.pairHole.count:][:s.pairHole.count]
-			for _, p := range particles[s.pairPart.start[k][ab]:s.pairPart.start[k][ab+1]] {
-				// twice holds both signs of the row of g: the list selects one.
-				for i, v := range g[s.offset[k]+int(p.with)*width:][:width] {
-					if p.odd != 0 {
-						v = -v
-					}
-					twice[2*i], twice[2*i+1] = v, -v
-				}
-				from := m[s.offset[k-2]+int(p.without)*below:][:below]
-				for ij := range row {
-					var sum complex128
-					for _, h := range holes[starts[ij]:starts[ij+1]] {
-						sum += twice[2*h.with+h.odd] * from[h.without]
-					}
-					row[ij] += sum
-				}
+			row := d[ab*pairs:][:pairs]
+			for t := ab * p.terms; t < (ab+1)*p.terms; t++ {
+				odd := p.without[t] & 1
+				from := twice[2*(s.offset[k-2]+int(p.without[t]>>1)*below):][:2*below]
+				addPairs(row, g[s.offset[k]+int(p.with[t])*width:][:width], from, h, odd)
 			}
 		}
+	}
+}
+
+// addPairs is one pair of particles in one set: all pairs of holes.
+func addPairs(row, g, twice []complex128, h *pairLevel, odd int32) {
+	n := h.terms
+	for ij := range row {
+		with, without := h.with[ij*n:][:n], h.without[ij*n:][:n]
+		without = without[:len(with)]
+		var sum complex128
+		for t, c := range with {
+			sum += g[c] * twice[without[t]^odd]
+		}
+		row[ij] += sum
 	}
 }

@@ -2,6 +2,7 @@ package expansion
 
 import (
 	"math"
+	"math/bits"
 
 	"leadline/hamiltonian/linalg"
 	"leadline/trial"
@@ -99,51 +100,49 @@ func (s *Source) projectOnSupport(a *form, w trial.Walkers, spin int) {
 	}
 }
 
-// Thresholds of the choice of reference: a row of the preferred string is taken
-// while its element is not smaller than preference times the largest one, and the
-// result is kept while no element of θ is larger than largestTheta. Either only
-// bounds the growth of rounding errors; what they buy is that most walkers of a
-// tile have one reference.
-const (
-	preference   = 0.1
-	largestTheta = 8
-)
+// largestTheta is the largest element of θ, |re|+|im|, that is accepted of the
+// preferred reference. It bounds the loss of digits; what it buys is that most
+// walkers of a tile have one reference.
+const largestTheta = 8
 
-// pivot exchanges every column of S†φ with a row: first the core's rows, then
-// active rows. The exchanged rows then hold (φ_occ)⁻¹, the others φ (φ_occ)⁻¹. It
-// sets log and phase of det φ_occ, rows ascending, and returns the active rows
-// taken as a string; ok is false where the rows' rank is too small or a number is
-// not finite (then log is NaN).
+// pivot exchanges every column of S†φ with a row: those of the core and of the
+// preferred reference or, where that would be unstable, of the core and then of
+// the active rows that have the largest elements left. The exchanged rows then
+// hold (φ_occ)⁻¹, the others φ (φ_occ)⁻¹. It sets log and phase of det φ_occ, rows
+// ascending, and returns the active rows taken as a string; ok is false where the
+// rows' rank is too small or a number is not finite (then log is NaN).
 func (s *Source) pivot(a *form, i, spin int) (reference uint64, ok bool) {
-	reference, ok = s.pivotWith(a, i, spin, s.preferred[spin])
-	if ok && s.thetaSize(a, spin, reference) <= largestTheta {
-		return reference, true
+	if s.pivotWith(a, i, spin, s.preferred[spin]) && s.thetaSize(a, spin) <= largestTheta {
+		return s.preferred[spin], true
 	}
-	return s.pivotWith(a, i, spin, 0)
+	if !s.pivotWith(a, i, spin, 0) {
+		return 0, false
+	}
+	for _, row := range a.row[s.core:s.sector.Electrons(spin)] {
+		reference |= 1 << (row - s.core)
+	}
+	return reference, true
 }
 
-// thetaSize returns the largest |re|+|im| of θ in the exchanged matrix.
-func (s *Source) thetaSize(a *form, spin int, reference uint64) float64 {
+// thetaSize returns the largest |re|+|im| of the active rows not exchanged.
+func (s *Source) thetaSize(a *form, spin int) float64 {
 	n := s.sector.Electrons(spin)
 	var most float64
-	for p := range s.active {
-		if reference>>p&1 == 1 {
+	for r := s.core; r < s.supported(); r++ {
+		if a.taken[r] {
 			continue
 		}
-		row := a.exchange[(s.core+p)*n:][:n]
-		for k, r := range a.row[:n] {
-			if r >= s.core {
-				v := row[a.col[k]]
-				most = max(most, math.Abs(real(v))+math.Abs(imag(v)))
-			}
+		for _, col := range a.col[s.core:n] {
+			v := a.exchange[r*n+col]
+			most = max(most, math.Abs(real(v))+math.Abs(imag(v)))
 		}
 	}
 	return most
 }
 
-// pivotWith is pivot with complete pivoting, but for the rows of a preferred
-// string, 0 for none.
-func (s *Source) pivotWith(a *form, i, spin int, preferred uint64) (reference uint64, ok bool) {
+// pivotWith is pivot for a given reference, or with complete pivoting for none,
+// first in the core's rows, then in the active ones.
+func (s *Source) pivotWith(a *form, i, spin int, reference uint64) bool {
 	n, ns := s.sector.Electrons(spin), s.supported()
 	x := a.exchange[:ns*n]
 	for j := range n {
@@ -156,31 +155,44 @@ func (s *Source) pivotWith(a *form, i, spin int, preferred uint64) (reference ui
 	a.taken = trial.Grow(a.taken, ns+n)
 	clear(a.taken)
 	rows, columns := a.taken[:ns], a.taken[ns:]
-	magnitude, phase := 0.0, complex128(1)
+	magnitude, phase := 1.0, complex128(1)
+	a.log[i] = 0
 	for step := range n {
-		from, to, wanted := 0, s.core, uint64(0)
-		if step >= s.core {
-			from, to, wanted = s.core, ns, preferred
+		from, to := 0, s.core
+		switch {
+		case step >= s.core && reference != 0:
+			from = s.core + bits.TrailingZeros64(reference)
+			to = from + 1
+			reference &= reference - 1
+		case step >= s.core:
+			from, to = s.core, ns
+		case reference != 0:
+			from, to = step, step+1
 		}
-		row, col, size := largest(x, n, from, to, rows, columns, wanted)
+		row, col, size := largest(x, n, from, to, rows, columns)
 		if size == 0 {
 			a.log[i], a.phase[i] = math.Inf(-1), 0
-			return 0, false
+			return false
 		}
 		d := x[row*n+col]
-		absolute := math.Hypot(real(d), imag(d))
-		if math.IsNaN(absolute) || math.IsInf(absolute, 0) {
-			a.log[i], a.phase[i] = math.NaN(), 0
-			return 0, false
+		absolute := math.Sqrt(real(d)*real(d) + imag(d)*imag(d))
+		if !(absolute > tiny && absolute < 1/tiny) { // or NaN
+			absolute = math.Hypot(real(d), imag(d))
+			if math.IsNaN(absolute) || math.IsInf(absolute, 0) {
+				a.log[i], a.phase[i] = math.NaN(), 0
+				return false
+			}
 		}
-		magnitude += math.Log(absolute)
+		if next := magnitude * absolute; next > tiny && next < 1/tiny {
+			magnitude = next
+		} else {
+			a.log[i] += math.Log(magnitude) + math.Log(absolute)
+			magnitude = 1
+		}
 		phase *= complex(real(d)/absolute, imag(d)/absolute)
 		exchange(x, ns, n, row, col)
 		rows[row], columns[col] = true, true
 		a.row[step], a.col[step] = row, col
-		if row >= s.core {
-			reference |= 1 << (row - s.core)
-		}
 	}
 	// Sorting the rows gives the order of occupied orbitals; the sign is that of
 	// the permutation from it to the columns.
@@ -197,42 +209,32 @@ func (s *Source) pivotWith(a *form, i, spin int, preferred uint64) (reference ui
 			}
 		}
 	}
-	a.log[i], a.phase[i] = magnitude, phase
-	return reference, true
+	a.log[i] += math.Log(magnitude)
+	a.phase[i] = phase
+	return true
 }
 
+// tiny bounds products whose logarithm is put off.
+const tiny = 1e-140
+
 // largest finds the element of largest |re|+|im| among rows from ≤ r < to and
-// columns not yet taken, or the largest in a preferred row (bit r−from set) if it
-// is not much smaller; the first NaN wins.
-func largest(x []complex128, n, from, to int, rows, columns []bool, preferred uint64) (row, col int, size float64) {
-	var wantedRow, wantedCol int
-	var wantedSize float64
+// columns not yet taken; the first NaN wins.
+func largest(x []complex128, n, from, to int, rows, columns []bool) (row, col int, size float64) {
 	for r := from; r < to; r++ {
 		if rows[r] {
 			continue
 		}
-		var best float64
-		at := -1
 		for c, v := range x[r*n : r*n+n] {
 			if columns[c] {
 				continue
 			}
 			a := math.Abs(real(v)) + math.Abs(imag(v))
-			if a > best {
-				at, best = c, a
+			if a > size {
+				row, col, size = r, c, a
 			} else if a != a {
 				return r, c, a
 			}
 		}
-		if best > size {
-			row, col, size = r, at, best
-		}
-		if best > wantedSize && preferred>>(r-from)&1 == 1 {
-			wantedRow, wantedCol, wantedSize = r, at, best
-		}
-	}
-	if wantedSize >= preference*size {
-		return wantedRow, wantedCol, wantedSize
 	}
 	return row, col, size
 }

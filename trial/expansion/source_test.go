@@ -68,7 +68,7 @@ func TestMinors(t *testing.T) {
 			}
 		}
 		second := make([]complex128, s.pairPart.count*s.pairHole.count)
-		s.secondDerivatives(second, g, m, levels, make([]complex128, 2*s.widest()))
+		s.secondDerivatives(second, g, m, levels, make([]complex128, 2*s.minors()))
 		for b := range np {
 			for a := range b {
 				for j := range nh {

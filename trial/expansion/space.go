@@ -79,15 +79,6 @@ func (s *space) minors() int { return s.offset[len(s.offset)-1] }
 // excitations returns the number of pairs of particle and hole.
 func (s *space) excitations() int { return s.electrons * (s.active - s.electrons) }
 
-// widest returns the largest number of subsets of holes of one size.
-func (s *space) widest() int {
-	most := 0
-	for k := range s.holes.levels {
-		most = max(most, s.holes.count(k))
-	}
-	return most
-}
-
 // frame returns the frame of a reference string; spare is overwritten and
 // returned where no more frames are kept.
 func (s *space) frame(reference uint64, spare *frame) *frame {
