@@ -8,7 +8,6 @@ import (
 
 	"github.com/spf13/cobra"
 
-	"leadline/cmd/leadline/job"
 	"leadline/hamiltonian/exact"
 )
 
@@ -47,11 +46,7 @@ func exactCommand(stderr io.Writer) *cobra.Command {
 				}
 				only = &spin
 			}
-			in, text, name, err := openJob(args[0])
-			if err != nil {
-				return err
-			}
-			j, err := job.Parse(text, name)
+			in, j, _, err := loadJob(args[0])
 			if err != nil {
 				return err
 			}

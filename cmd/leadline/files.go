@@ -10,6 +10,8 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+
+	"leadline/cmd/leadline/job"
 )
 
 //go:embed example
@@ -41,6 +43,19 @@ func openJob(name string) (*inputs, []byte, string, error) {
 	}
 	in.hashes = map[string]string{"job.toml": hash(text)}
 	return in, text, name, nil
+}
+
+// loadJob reads and checks a job file; a job without title gets the file's name.
+func loadJob(name string) (*inputs, *job.Job, string, error) {
+	in, text, name, err := openJob(name)
+	if err != nil {
+		return nil, nil, "", err
+	}
+	j, err := job.Parse(text, name)
+	if err == nil && j.Title == "" {
+		err = j.Set("title", baseName(name))
+	}
+	return in, j, name, err
 }
 
 // jobFileLimit is far above any job; what is larger is something else.

@@ -30,7 +30,7 @@ type guidance struct {
 
 // newGuidance builds the trial that a job asks for.
 func newGuidance(ctx context.Context, j *job.Job, in *inputs, s *system) (*guidance, error) {
-	g := &guidance{start: occupied(s.start), reference: j.Trial.Orbitals}
+	g := &guidance{start: s.start.occupied, reference: j.Trial.Orbitals}
 	var source trial.Source
 	var err error
 	switch j.Trial.Kind {
@@ -56,52 +56,49 @@ func newGuidance(ctx context.Context, j *job.Job, in *inputs, s *system) (*guida
 
 // determinant returns the reference determinant itself as the trial.
 func (g *guidance) determinant(ctx context.Context, j *job.Job, in *inputs, s *system) (trial.Source, error) {
-	if j.Trial.Orbitals == "file" {
+	reference, err := g.solveReference(ctx, j, in, s)
+	if err != nil {
+		return nil, err
+	}
+	return determinant.New(s.hamiltonian.Orbitals, reference)
+}
+
+// solveReference returns the occupied orbitals of the mean field that the job
+// names.
+func (g *guidance) solveReference(ctx context.Context, j *job.Job, in *inputs, s *system) (trial.Orbitals, error) {
+	name := j.Trial.Orbitals
+	if name == "file" {
 		set, err := readOrbitals(j, in, s.hamiltonian)
 		if err != nil {
-			return nil, err
+			return trial.Orbitals{}, err
 		}
 		g.notes = append(g.notes, set.Notes...)
-		source, err := determinant.New(s.hamiltonian.Orbitals, orbitalsOf(set))
+		o := orbitalsOf(set)
+		reference, err := determinant.New(s.hamiltonian.Orbitals, o)
 		if err != nil {
-			return nil, fmt.Errorf("%s: %w", in.path(j.Trial.OrbitalsFile), err)
+			return trial.Orbitals{}, fmt.Errorf("%s: %w", in.path(j.Trial.OrbitalsFile), err)
 		}
-		g.meanField = source.Energy(s.hamiltonian)
-		return source, nil
+		g.meanField = reference.Energy(s.hamiltonian)
+		return o, nil
 	}
-	reference, err := g.solveReference(ctx, j, s)
-	if err != nil {
-		return nil, err
+	if name == s.start.kind.String() || (name == "rohf" && s.start.kind == meanfield.RHF) {
+		g.meanField = s.start.energy
+		return s.start.occupied, nil
 	}
-	return determinant.New(s.hamiltonian.Orbitals, occupied(reference))
-}
-
-// solveReference solves the mean field that the job names.
-func (g *guidance) solveReference(ctx context.Context, j *job.Job, s *system) (*meanfield.Solution, error) {
-	reference, err := s.reference(ctx, j.Trial.Orbitals)
-	if err != nil {
-		return nil, err
-	}
-	g.meanField = reference.Energy
-	g.notes = append(g.notes, reference.Notes...)
-	return reference, nil
-}
-
-// reference solves the mean field of the given name.
-func (s *system) reference(ctx context.Context, name string) (*meanfield.Solution, error) {
-	kind := map[string]meanfield.Kind{"rhf": meanfield.RHF, "rohf": meanfield.ROHF, "uhf": meanfield.UHF}[name]
-	h := s.hamiltonian
-	if kind != meanfield.UHF {
-		if kind == s.start.Kind || (kind == meanfield.ROHF && h.Up == h.Down) {
-			return s.start, nil
+	kind, h := meanfield.UHF, s.hamiltonian
+	if name != "uhf" {
+		kind, h = meanfield.ROHF, s.spinFree
+		if name == "rhf" {
+			kind = meanfield.RHF
 		}
-		h = s.spinFree
 	}
 	solution, err := meanfield.Solve(ctx, h, kind, meanfield.Options{})
 	if err != nil {
-		return nil, fmt.Errorf("%s: %w", name, err)
+		return trial.Orbitals{}, fmt.Errorf("%s: %w", name, err)
 	}
-	return solution, nil
+	g.meanField = solution.Energy
+	g.notes = append(g.notes, solution.Notes...)
+	return occupied(solution), nil
 }
 
 // occupied returns the occupied orbitals of a solution; restricted ones of a

@@ -16,6 +16,8 @@ import (
 	"leadline/hamiltonian"
 	"leadline/hamiltonian/fcidump"
 	"leadline/hamiltonian/meanfield"
+	"leadline/hamiltonian/prepared"
+	"leadline/trial/expansion"
 )
 
 func inspectCommand(stderr io.Writer) *cobra.Command {
@@ -68,8 +70,12 @@ func inspect(ctx context.Context, name string, out io.Writer, shown display) err
 		return inspectJob(name, out)
 	case bytes.HasPrefix(head, []byte{0x1f, 0x8b}), bytes.HasPrefix(bytes.TrimSpace(head), []byte("&")):
 		return inspectIntegrals(ctx, name, out, shown)
+	case bytes.HasPrefix(head, []byte("# expansion")):
+		return inspectExpansion(name, out)
+	case bytes.HasPrefix(head, []byte("leadline prepared ")):
+		return inspectPrepared(ctx, name, out, shown)
 	}
-	return fmt.Errorf("%s: is none of: integral file, job file, directory of results", name)
+	return fmt.Errorf("%s: is none of: integral file, prepared hamiltonian, expansion, job file, directory of results", name)
 }
 
 func firstBytes(name string) ([]byte, error) {
@@ -107,6 +113,58 @@ func inspectIntegrals(ctx context.Context, name string, out io.Writer, shown dis
 	fmt.Fprintf(out, "  %d orbitals, %d up and %d down electrons, constant energy %s E_h\n", h.Orbitals, h.Up, h.Down, quoted(h.Constant, 0))
 	fmt.Fprintf(out, "  %d factors, largest error on a diagonal integral %.1e E_h\n", h.Factors.Count(), residual)
 	return inspectMeanField(ctx, h, out)
+}
+
+// inspectPrepared reads a prepared Hamiltonian and solves its mean fields.
+func inspectPrepared(ctx context.Context, name string, out io.Writer, shown display) error {
+	in := &inputs{hashes: map[string]string{}}
+	file, size, err := in.open(name)
+	if err != nil {
+		return err
+	}
+	defer file.Close()
+	tell := shown.stage("reading "+filepath.Base(name), size)
+	p, err := prepared.Read(ctx, file, name, func(done, _ int64) { tell(done) })
+	if err != nil {
+		return err
+	}
+	h := p.Hamiltonian
+	fmt.Fprintf(out, "%s: prepared hamiltonian %q, fingerprint %s\n", name, p.Provenance.Title, p.Fingerprint)
+	fmt.Fprintf(out, "  %d orbitals, %d up and %d down electrons, constant energy %s\n", h.Orbitals, h.Up, h.Down, quoted(h.Constant, 0))
+	fmt.Fprintf(out, "  %d factors, largest error on a diagonal integral %.1e; %d frozen orbitals\n", h.Factors.Count(), p.Provenance.FactorResidual, p.Provenance.FrozenCore)
+	if !h.SpinFree() {
+		return nil // restricted mean fields need factors that act alike on both spins
+	}
+	return inspectMeanField(ctx, h, out)
+}
+
+// inspectExpansion reads an expansion and describes it.
+func inspectExpansion(name string, out io.Writer) error {
+	file, err := os.Open(name)
+	if err != nil {
+		return err
+	}
+	defer file.Close()
+	e, err := expansion.Read(file, name)
+	if err != nil {
+		return err
+	}
+	basis := e.Basis
+	if basis == "" {
+		basis = "unknown"
+	}
+	fmt.Fprintf(out, "%s: expansion of %d determinants, norm %.8g\n", name, len(e.Determinants), e.Norm())
+	fmt.Fprintf(out, "  %d orbitals, %d core and %d active with %d up and %d down electrons\n", e.Orbitals, e.Core, e.Active, e.Up, e.Down)
+	fmt.Fprintf(out, "  orbitals of the file with fingerprint %s\n", basis)
+	if e.Origin != "" {
+		fmt.Fprintf(out, "  source: %s\n", e.Origin)
+	}
+	source, err := expansion.New(e)
+	if err != nil {
+		return fmt.Errorf("%s: %w", name, err)
+	}
+	fmt.Fprintf(out, "  <S^2> = %.6f\n", source.SpinSquared())
+	return nil
 }
 
 // inspectMeanField prints energies, spin and orbital energies of the mean fields.

@@ -26,6 +26,7 @@ type runFlags struct {
 	cores     int
 	quiet     bool
 	exact     bool
+	expansion string
 }
 
 func runCommand(stderr io.Writer) *cobra.Command {
@@ -56,6 +57,7 @@ func runCommand(stderr io.Writer) *cobra.Command {
 	flags.BoolVar(&f.json, "json", false, "print the summary as one JSON object")
 	flags.Int64Var(&f.seed, "seed", 0, "random seed, in place of the job's")
 	flags.IntVar(&f.cores, "cores", runtime.GOMAXPROCS(0), "goroutines that propagate walkers")
+	flags.StringVar(&f.expansion, "write-expansion", "", "also write the trial, a CI expansion in the orbitals of the job's file, to this file")
 	flags.BoolVar(&f.exact, "exact", false, "add the exact energy (full CI), where it fits in memory")
 	flags.BoolVar(&f.quiet, "quiet", false, "no progress on stderr")
 	return c
@@ -63,21 +65,12 @@ func runCommand(stderr io.Writer) *cobra.Command {
 
 // runJob does one job and prints its result.
 func runJob(ctx context.Context, name string, f runFlags, seeded bool, stdout, stderr io.Writer) error {
-	in, text, name, err := openJob(name)
-	if err != nil {
-		return err
-	}
-	j, err := job.Parse(text, name)
+	in, j, name, err := loadJob(name)
 	if err != nil {
 		return err
 	}
 	if seeded {
-		if j, err = j.With(job.Setting{Key: "projection.seed", Value: f.seed}); err != nil {
-			return err
-		}
-	}
-	if j.Title == "" {
-		if j, err = j.With(job.Setting{Key: "title", Value: baseName(name)}); err != nil {
+		if err := j.Set("projection.seed", f.seed); err != nil {
 			return err
 		}
 	}
@@ -136,13 +129,13 @@ func (r *jobRun) prepare(ctx context.Context) (err error) {
 	}
 	s, h := r.system, r.system.hamiltonian
 	r.say("%d orbitals, %d up and %d down electrons, %d factors (largest integral error %.1e), %d frozen orbitals",
-		h.Orbitals, h.Up, h.Down, h.Factors.Count(), s.residual, s.frozen)
+		h.Orbitals, h.Up, h.Down, h.Factors.Count(), s.residual, s.frozen+s.frozenBefore)
 	if r.guidance, err = newGuidance(ctx, r.job, r.in, s); err != nil {
 		return err
 	}
 	g := r.guidance
 	r.say("mean field (%s) %s %s; walkers start from %v with <S^2> = %.4f, kept by the projection", g.reference,
-		quoted(g.meanField, 0), symbol(s.unit), s.start.Kind, s.start.SpinSquared)
+		quoted(g.meanField, 0), symbol(s.unit), s.start.kind, s.start.spinSquared)
 	for _, note := range g.notes {
 		r.say("note: %s", note)
 	}
@@ -152,10 +145,30 @@ func (r *jobRun) prepare(ctx context.Context) (err error) {
 	if err := checkMemory(cost.Bytes, "the walk"); err != nil {
 		return err
 	}
+	if r.flags.expansion != "" {
+		if err := r.writeExpansion(); err != nil {
+			return err
+		}
+	}
 	if r.flags.exact {
 		r.exact, err = s.exact(ctx, 1, s.keptSpin(), r.shown)
 	}
 	return err
+}
+
+// writeExpansion writes the trial, if it is an expansion in the orbitals that a
+// file fixes.
+func (r *jobRun) writeExpansion() error {
+	e := r.guidance.expansion
+	switch {
+	case e == nil:
+		return fmt.Errorf("--write-expansion needs a trial that is a CI expansion, found kind %q", r.job.Trial.Kind)
+	case e.Columns != nil:
+		return fmt.Errorf("--write-expansion: the expansion is in orbitals of its own window; fix them first with leadline prepare --expansion")
+	}
+	named := *e
+	named.Basis = r.system.fingerprint(r.in)
+	return writeFile(r.flags.expansion, named.Write)
 }
 
 // project makes the result directory, runs the walk and writes what came out.
@@ -296,8 +309,8 @@ func (r *jobRun) print(w io.Writer) error {
 		fmt.Fprintf(&b, "\n  (autocorrelation time %.2g)", *out.AutocorrelationTm)
 	}
 	fmt.Fprintf(&b, "\n  %d orbitals, %d up and %d down electrons, %d frozen orbitals, %d factors\n",
-		out.Orbitals, out.Up, out.Down, s.frozen, out.Factors)
-	fmt.Fprintf(&b, "  walkers keep the spin of their %v start, <S^2> = %.4f\n", s.start.Kind, s.start.SpinSquared)
+		out.Orbitals, out.Up, out.Down, s.frozen+s.frozenBefore, out.Factors)
+	fmt.Fprintf(&b, "  walkers keep the spin of their %v start, <S^2> = %.4f\n", s.start.kind, s.start.spinSquared)
 	fmt.Fprintf(&b, "  seed %d, kernel %s, version %s, %.0f s; status: %s\n", out.Seed, out.Kernel, out.Version, out.WallSeconds, out.Status)
 	if len(out.Warnings) > 0 {
 		fmt.Fprintf(&b, "\n  warnings\n")

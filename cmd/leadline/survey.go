@@ -76,15 +76,11 @@ func runSurvey(ctx context.Context, name string, f runFlags, stdout, stderr io.W
 		return err
 	}
 	jobName := in.path(survey.Job)
-	_, base, _, err := openJob(jobName)
-	if err != nil {
-		return fmt.Errorf("%s: job: %w", name, err)
-	}
-	// Every point is checked before the first one runs.
-	first, err := job.Parse(base, jobName)
+	_, first, _, err := loadJob(jobName)
 	if err != nil {
 		return err
 	}
+	// Every point is checked before the first one runs.
 	settings := survey.Points()
 	jobs := make([]*job.Job, len(settings))
 	for i := range settings {
@@ -151,13 +147,6 @@ func surveyDirectory(explicit, name string) (string, error) {
 
 // run does one point; exact states are kept in known, one for each Hamiltonian.
 func (p *point) run(ctx context.Context, j *job.Job, jobName, dir string, f runFlags, known map[string]*exactResult, stderr io.Writer) error {
-	if j.Title == "" {
-		titled, err := j.With(job.Setting{Key: "title", Value: baseName(jobName)})
-		if err != nil {
-			return err
-		}
-		j = titled
-	}
 	f.output = filepath.Join(dir, p.Directory)
 	wantExact := f.exact
 	f.exact = false

@@ -16,6 +16,8 @@ import (
 	"leadline/hamiltonian/meanfield"
 	"leadline/hamiltonian/molecule"
 	"leadline/hamiltonian/pairing"
+	"leadline/hamiltonian/prepared"
+	"leadline/trial"
 )
 
 // system is what a job solves: the Hamiltonian and its mean field.
@@ -27,14 +29,29 @@ type system struct {
 	unit     string
 	constant float64 // before freezing
 	frozen   int
+	// frozenBefore counts orbitals already folded in by a prepared file.
+	frozenBefore int
 	// basisFile is the file that fixes the orbitals, empty where none does.
 	basisFile string
 	residual  float64 // left by the factorisation on any diagonal integral
-	// start is the spin-pure determinant (RHF or ROHF) that walkers start from.
-	start    *meanfield.Solution
-	guess    [2]*mat.SymDense
-	molecule *molecule.Result
-	warnings []afqmc.Warning
+	start     *start
+	guess     [2]*mat.SymDense
+	molecule  *molecule.Result
+	// coefficients holds the orbitals as combinations of a molecule's basis
+	// functions, functions×M; nil for other sources.
+	coefficients *mat.Dense
+	warnings     []afqmc.Warning
+}
+
+// start is the spin-pure determinant (RHF or ROHF) that walkers start from.
+type start struct {
+	kind        meanfield.Kind
+	energy      float64
+	spinSquared float64
+	occupied    trial.Orbitals
+	// orbitals holds all orbitals, M×M, or is nil where only the occupied ones
+	// are known.
+	orbitals *mat.Dense
 }
 
 // progressFunc starts a display of one stage; the function that it returns is
@@ -51,12 +68,12 @@ func newSystem(ctx context.Context, j *job.Job, in *inputs, progress progressFun
 		err = s.fromIntegrals(ctx, j, in, progress)
 	case "molecule":
 		err = s.fromMolecule(ctx, j, in, progress)
+	case "prepared":
+		err = s.fromPrepared(ctx, j, in, progress)
 	case "hubbard":
 		err = s.fromHubbard(j)
 	case "pairing":
 		err = s.fromPairing(j)
-	default:
-		err = fmt.Errorf("hamiltonian source %q is not available in this version", j.Hamiltonian.Source)
 	}
 	if err != nil {
 		return nil, err
@@ -64,24 +81,79 @@ func newSystem(ctx context.Context, j *job.Job, in *inputs, progress progressFun
 	if s.spinFree == nil {
 		s.spinFree = s.hamiltonian
 	}
-	s.constant = s.hamiltonian.Constant
+	if j.Hamiltonian.Source != "prepared" {
+		s.constant = s.hamiltonian.Constant
+	}
 	options := meanfield.Options{Guess: s.guess}
 	if s.frozen > 0 {
-		s.hamiltonian, _, err = meanfield.FrozenCore(ctx, s.hamiltonian, s.frozen, options)
+		var whole *meanfield.Solution
+		s.hamiltonian, whole, err = meanfield.FrozenCore(ctx, s.hamiltonian, s.frozen, options)
 		if err != nil {
 			return nil, fmt.Errorf("frozen core: %w", err)
 		}
+		if s.coefficients != nil {
+			m := s.hamiltonian.Orbitals + s.frozen
+			s.coefficients = product(s.coefficients, whole.Orbitals[hamiltonian.Up].Slice(0, m, s.frozen, m))
+		}
 		s.spinFree = s.hamiltonian
-		options = meanfield.Options{}
+		s.start, options = nil, meanfield.Options{}
 	}
 	kind := meanfield.RHF
 	if s.hamiltonian.Up != s.hamiltonian.Down {
 		kind = meanfield.ROHF
 	}
-	if s.start, err = meanfield.Solve(ctx, s.spinFree, kind, options); err != nil {
+	if s.start != nil {
+		return s, nil // read with the Hamiltonian
+	}
+	solution, err := meanfield.Solve(ctx, s.spinFree, kind, options)
+	if err != nil {
 		return nil, fmt.Errorf("%v: %w", kind, err)
 	}
+	s.start = &start{
+		kind:        kind,
+		energy:      solution.Energy,
+		spinSquared: solution.SpinSquared,
+		occupied:    occupied(solution),
+		orbitals:    solution.Orbitals[hamiltonian.Up],
+	}
+	if s.molecule != nil {
+		s.rotate(s.start.orbitals)
+	}
 	return s, nil
+}
+
+// rotate turns everything into the orbitals that are the columns of c, M×M.
+func (s *system) rotate(c *mat.Dense) {
+	one := s.spinFree == s.hamiltonian
+	s.hamiltonian = s.hamiltonian.Rotate(c)
+	if one {
+		s.spinFree = s.hamiltonian
+	} else {
+		s.spinFree = s.spinFree.Rotate(c)
+	}
+	turn := func(m *mat.Dense) *mat.Dense {
+		if m == nil || m.IsEmpty() {
+			return m
+		}
+		return product(c.T(), m)
+	}
+	o := &s.start.occupied
+	same := o.Re[hamiltonian.Up] == o.Re[hamiltonian.Down]
+	if o.Re[hamiltonian.Up] = turn(o.Re[hamiltonian.Up]); same {
+		o.Re[hamiltonian.Down] = o.Re[hamiltonian.Up]
+	} else {
+		o.Re[hamiltonian.Down] = turn(o.Re[hamiltonian.Down])
+	}
+	s.start.orbitals = turn(s.start.orbitals)
+	if s.coefficients != nil {
+		s.coefficients = product(s.coefficients, c)
+	}
+}
+
+func product(a, b mat.Matrix) *mat.Dense {
+	var out mat.Dense
+	out.Mul(a, b)
+	return &out
 }
 
 // spin returns the total spin S of the start, which the projection keeps.
@@ -154,6 +226,44 @@ func (s *system) fromIntegrals(ctx context.Context, j *job.Job, in *inputs, prog
 	return nil
 }
 
+// fromPrepared reads a prepared Hamiltonian, whose reference is the start.
+func (s *system) fromPrepared(ctx context.Context, j *job.Job, in *inputs, progress progressFunc) error {
+	name := j.Hamiltonian.File
+	file, size, err := in.open(name)
+	if err != nil {
+		return err
+	}
+	defer file.Close()
+	tell := progress("reading "+name, size)
+	p, err := prepared.Read(ctx, file, in.path(name), func(done, _ int64) { tell(done) })
+	if err != nil {
+		return err
+	}
+	s.hamiltonian, s.residual = p.Hamiltonian, p.Provenance.FactorResidual
+	s.constant = p.Hamiltonian.Constant
+	if p.Provenance.FrozenCore > 0 {
+		s.constant = p.Provenance.ConstantBeforeFreezing
+	}
+	if p.Provenance.Unit != "" {
+		s.unit = p.Provenance.Unit
+	}
+	s.frozenBefore = p.Provenance.FrozenCore
+	if s.frozen = int(j.Hamiltonian.FrozenCore); s.frozen == 0 {
+		s.basisFile = name
+	}
+	if r := p.Reference; r != nil {
+		kind := map[string]meanfield.Kind{"rhf": meanfield.RHF, "rohf": meanfield.ROHF}
+		if k, ok := kind[r.Kind]; ok {
+			s.start = &start{kind: k, energy: r.Energy, spinSquared: meanfield.SpinSquared(r.Occupied),
+				occupied: trial.RealOrbitals(r.Occupied[hamiltonian.Up], r.Occupied[hamiltonian.Down])}
+			if k == meanfield.RHF {
+				s.start.occupied.Re[hamiltonian.Down] = s.start.occupied.Re[hamiltonian.Up]
+			}
+		}
+	}
+	return nil
+}
+
 func (s *system) fromMolecule(ctx context.Context, j *job.Job, in *inputs, progress progressFunc) error {
 	geometry, err := readGeometry(j, in)
 	if err != nil {
@@ -180,6 +290,7 @@ func (s *system) fromMolecule(ctx context.Context, j *job.Job, in *inputs, progr
 		return err
 	}
 	s.hamiltonian, s.residual, s.guess = s.molecule.Hamiltonian, s.molecule.Residual, s.molecule.Density
+	s.coefficients = s.molecule.Orbitals
 	for _, w := range s.molecule.Warnings {
 		s.warnings = append(s.warnings, afqmc.Warning{Check: w.Check, Level: afqmc.Caution, Text: w.Text, Figure: w.Figure})
 	}

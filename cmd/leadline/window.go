@@ -18,7 +18,7 @@ import (
 
 // expand returns the CI expansion that the job describes as the trial.
 func (g *guidance) expand(ctx context.Context, j *job.Job, in *inputs, s *system) (trial.Source, error) {
-	reference, err := g.solveReference(ctx, j, s)
+	reference, err := g.solveReference(ctx, j, in, s)
 	if err != nil {
 		return nil, err
 	}
@@ -34,16 +34,22 @@ func (g *guidance) expand(ctx context.Context, j *job.Job, in *inputs, s *system
 	if err != nil {
 		return nil, err
 	}
+	if e, err = alter(e, j); err != nil {
+		return nil, err
+	}
+	g.expansion = e
+	return expansion.New(e)
+}
+
+// alter truncates the expansion and adds noise as the job asks.
+func alter(e *expansion.Expansion, j *job.Job) (*expansion.Expansion, error) {
 	if j.Trial.Largest > 0 {
 		e = e.Truncate(j.Trial.Largest)
 	}
 	if j.Trial.Noise > 0 {
-		if e, err = e.AddNoise(j.Trial.Noise, uint64(j.Trial.NoiseSeed)); err != nil {
-			return nil, err
-		}
+		return e.AddNoise(j.Trial.Noise, uint64(j.Trial.NoiseSeed))
 	}
-	g.expansion = e
-	return expansion.New(e)
+	return e, nil
 }
 
 // readExpansion reads an expansion file and refuses one for other orbitals.
@@ -94,9 +100,9 @@ type window struct {
 
 // newWindow places [electrons, orbitals] in natural orbitals of the reference, or
 // in canonical ones of the spin-pure mean field.
-func newWindow(ctx context.Context, space job.Space, kind string, s *system, reference *meanfield.Solution) (*window, error) {
+func newWindow(ctx context.Context, space job.Space, kind string, s *system, reference trial.Orbitals) (w *window, err error) {
 	h := s.hamiltonian
-	w := &window{active: space.Orbitals}
+	w = &window{active: space.Orbitals}
 	outside := h.Up + h.Down - space.Electrons
 	if outside < 0 || outside%2 != 0 {
 		return nil, fmt.Errorf("trial.active: %d electrons in the window leave %d of %d outside, expected an even number of them", space.Electrons, outside, h.Up+h.Down)
@@ -115,9 +121,12 @@ func newWindow(ctx context.Context, space job.Space, kind string, s *system, ref
 		w.orbitals, w.h = nil, h
 		return w, nil
 	}
-	w.orbitals = s.start.Orbitals[hamiltonian.Up]
 	if kind == "natural" {
-		w.orbitals, _ = meanfield.NaturalOrbitals(reference, h)
+		if w.orbitals, err = s.naturalOrbitals(reference); err != nil {
+			return nil, err
+		}
+	} else if w.orbitals, err = s.canonicalOrbitals(ctx); err != nil {
+		return nil, err
 	}
 	folded, err := h.Rotate(w.orbitals).FreezeCore(w.core)
 	if err != nil {
@@ -129,6 +138,37 @@ func newWindow(ctx context.Context, space job.Space, kind string, s *system, ref
 	}
 	w.h = folded.Rotate(keep)
 	return w, ctx.Err()
+}
+
+// canonicalOrbitals returns all orbitals of the start by energy.
+func (s *system) canonicalOrbitals(ctx context.Context) (*mat.Dense, error) {
+	if s.start.orbitals == nil {
+		solution, err := meanfield.Solve(ctx, s.spinFree, s.start.kind, meanfield.Options{})
+		if err != nil {
+			return nil, err
+		}
+		s.start.orbitals = solution.Orbitals[hamiltonian.Up]
+	}
+	return s.start.orbitals, nil
+}
+
+// naturalOrbitals returns those of a reference's density, most occupied first.
+func (s *system) naturalOrbitals(reference trial.Orbitals) (*mat.Dense, error) {
+	if !reference.Real() {
+		return nil, fmt.Errorf("trial.window: natural orbitals need real reference orbitals")
+	}
+	solution := &meanfield.Solution{Kind: meanfield.UHF, Sector: s.hamiltonian.Sector}
+	for spin := range 2 {
+		n := reference.Columns(spin)
+		solution.Orbitals[spin] = mat.NewDense(s.hamiltonian.Orbitals, s.hamiltonian.Orbitals, nil)
+		for j := range n {
+			for p := range s.hamiltonian.Orbitals {
+				solution.Orbitals[spin].Set(p, j, reference.Re[spin].At(p, j))
+			}
+		}
+	}
+	orbitals, _ := meanfield.NaturalOrbitals(solution, s.spinFree)
+	return orbitals, nil
 }
 
 func abs(n int) int {
