@@ -196,7 +196,7 @@ func testGemm[T float](t *testing.T) {
 		rng := rand.New(rand.NewPCG(5, 1))
 		for m := range 20 {
 			for _, n := range []int{0, 1, 2, 3, 5, 7, 8, 9, 15, 16, 17, 23, 24, 25, 31, 47, 48, 49, 65, 97} {
-				for _, k := range []int{0, 1, 2, 5, 30} {
+				for _, k := range []int{0, 1, 3, 30} {
 					checkProduct[T](t, tier, rng, m, n, k)
 				}
 			}
@@ -204,8 +204,7 @@ func testGemm[T float](t *testing.T) {
 		for range 30 {
 			checkProduct[T](t, tier, rng, 1+rng.IntN(400), 1+rng.IntN(120), 1+rng.IntN(400))
 		}
-		for _, s := range [][3]int{{200, 500, 390}, {193, 1001, 193}, {7, 1200, 600}, {64, 300, 1000}, {450, 3, 450}, {1, 1, 5000}} {
-			checkProduct[T](t, tier, rng, s[0], s[1], s[2])
+		for _, s := range [][3]int{{200, 500, 390}, {450, 1001, 290}, {7, 1200, 600}, {64, 300, 1000}, {450, 3, 450}, {1, 1, 5000}} {
 			checkProduct[T](t, tier, rng, s[0], s[1], s[2])
 		}
 	})
