@@ -20,7 +20,7 @@ const (
 	// residual elements is below this part of the tolerance (same paper, sec. II).
 	damping = 1e-3
 	// stripe is the number of rows that one work item of the products updates.
-	stripe = 512
+	stripe = 256
 	// lost is the negative diagonal, relative to the largest integral, beyond which
 	// rounding no longer explains it.
 	lost = 1e-10
@@ -300,11 +300,23 @@ func (s *factorisation) subtract(pivots []int) {
 	}
 }
 
-// stripes calls do for fixed stripes of rows.
+// stripes calls do for those of the fixed stripes of rows that hold active pairs.
 func (s *factorisation) stripes(do func(from, to int)) {
 	n := len(s.d)
-	each((n+stripe-1)/stripe, func() func(int) {
-		return func(i int) { do(i*stripe, min(n, (i+1)*stripe)) }
+	live := make([]bool, (n+stripe-1)/stripe)
+	for i, p := range s.f.pairs {
+		if s.active[i] {
+			for k := p.first / stripe; k <= (p.first+len(p.rows)-1)/stripe; k++ {
+				live[k] = true
+			}
+		}
+	}
+	each(len(live), func() func(int) {
+		return func(i int) {
+			if live[i] {
+				do(i*stripe, min(n, (i+1)*stripe))
+			}
+		}
 	})
 }
 
