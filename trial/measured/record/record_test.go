@@ -200,6 +200,7 @@ func TestEditsGiveTheirCode(t *testing.T) {
 		{"matching_n4", `"settings":50`, `"settings":51`, record.CodeCount},
 		{"matching_n4", `"settings":50,"shots":50`, `"settings":50,"shots":49`, record.CodeCount},
 		{"clifford_n4", `"R":["1010","0110"],"B":["10","00"]`, `"R":["1010","1100"],"B":["10","00"]`, record.CodeRREF},
+		{"clifford_n4", `"R":["1010","0110"],"B":["10","00"]`, `"R":["1100","0100"],"B":["10","00"]`, record.CodeRREF},
 		{"clifford_n4", `"R":["1010","0110"],"B":["10","00"]`, `"R":["1010","0110"],"B":["10"]`, record.CodeLength},
 		{"clifford_n4", `"R":["1010","0110"],"B":["10","00"]`, `"R":["1010","0110"],"B":["100","000"]`, record.CodeLength},
 		{"clifford_n4", `"R":["1010","0110"],`, `"R":["1010","0000"],`, record.CodeRank},
