@@ -1,5 +1,6 @@
 // Command cblas times the product of package linalg beside OpenBLAS and gonum,
-// on one thread, interleaved in one run, and prints medians. It is a module of
+// on one thread, interleaved in one run, and prints medians (of processor time on
+// Linux, so that it can be used on a busy machine). It is a module of
 // its own, because it needs cgo and an installed C library; the project does not.
 //
 //	go -C benchmarks/cblas run . [-rounds 15] [-core SkylakeX]
@@ -118,19 +119,19 @@ func rates(rounds int, flops float64, functions ...func()) []float64 {
 	repeat := make([]int, len(functions))
 	for i, f := range functions {
 		f()
-		start := time.Now()
-		for repeat[i] = 0; repeat[i] == 0 || time.Since(start) < 5*time.Millisecond; repeat[i]++ {
+		start := clock()
+		for repeat[i] = 0; repeat[i] == 0 || clock()-start < 5*time.Millisecond; repeat[i]++ {
 			f()
 		}
 	}
 	times := make([][]float64, len(functions))
 	for range rounds {
 		for i, f := range functions {
-			start := time.Now()
+			start := clock()
 			for range repeat[i] {
 				f()
 			}
-			times[i] = append(times[i], time.Since(start).Seconds()/float64(repeat[i]))
+			times[i] = append(times[i], (clock()-start).Seconds()/float64(repeat[i]))
 		}
 	}
 	out := make([]float64, len(functions))
