@@ -18,6 +18,7 @@ import (
 	"leadline/afqmc"
 	"leadline/benchmarks/synthetic"
 	"leadline/hamiltonian/linalg"
+	"leadline/hamiltonian/prepared"
 )
 
 // report is what --json prints.
@@ -67,8 +68,16 @@ type growth struct {
 
 func main() {
 	asJSON := flag.Bool("json", false, "print one JSON object")
+	file := flag.String("prepared", "", "instead, write a synthetic prepared Hamiltonian to this file, for runs that measure memory")
+	orbitals := flag.Int("orbitals", 100, "its orbitals M, with N = M/5 electrons of each spin and 5M factors")
 	flag.Parse()
 	log.SetFlags(0)
+	if *file != "" {
+		if err := writePrepared(*file, *orbitals); err != nil {
+			log.Fatal(err)
+		}
+		return
+	}
 	r := &report{Kernel: linalg.Kernel(), Cores: runtime.GOMAXPROCS(0)}
 	r.products()
 	if err := r.walk(); err != nil {
@@ -86,6 +95,29 @@ func main() {
 		return
 	}
 	r.print(os.Stdout)
+}
+
+// writePrepared writes a synthetic Hamiltonian with its closed-shell start.
+func writePrepared(name string, m int) error {
+	h := synthetic.New(m, m/5, 5*m)
+	guide, start, err := synthetic.Guide(h, true, 0)
+	if err != nil {
+		return err
+	}
+	expectations, _ := guide.Expectations()
+	out, err := os.Create(name)
+	if err != nil {
+		return err
+	}
+	err = prepared.Write(out, &prepared.File{
+		Hamiltonian: h,
+		Reference:   &prepared.Reference{Kind: "rhf", Energy: expectations.Energy(h), Occupied: start.Re},
+		Provenance:  prepared.Provenance{Title: "synthetic"},
+	})
+	if closed := out.Close(); err == nil {
+		err = closed
+	}
+	return err
 }
 
 // products times the product of square matrices on one thread beside gonum's.
