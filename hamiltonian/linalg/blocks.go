@@ -28,13 +28,17 @@ func vectors(left int) int {
 	return (left + panels - 1) / panels
 }
 
-// B, too, is read where it lies, with prefetching, unless it is transposed. Only
-// from copyRows rows and copyArea numbers in B on does it pay to copy it into
-// packed blocks, by a few per cent.
-const (
-	copyRows = 448
-	copyArea = 1 << 18
-)
+// worthCopying tells whether B is to be copied into packed blocks. It is mostly
+// read where it lies, with prefetching: only in large products does a copy gain a
+// few per cent, and up to a third where the rows of B, apart by a multiple of
+// 1 KiB, share few sets of the first-level cache. Measured.
+func worthCopying[T float](t tier, m, n, k int, b operand[T]) bool {
+	var x T
+	if b.ld*int(unsafe.Sizeof(x))%1024 == 0 {
+		return m >= 32*t.rows() && n*k >= 1<<14
+	}
+	return m >= 448 && n*k >= 1<<18
+}
 
 // kernelProduct is the product for the tiers with kernels; no size is zero.
 func kernelProduct[T float](t tier, m, n, k int, alpha T, a, b operand[T], beta T, c []T, ldc int) {
@@ -43,7 +47,7 @@ func kernelProduct[T float](t tier, m, n, k int, alpha T, a, b operand[T], beta 
 	p.cRow = ldc * size
 	step, cols := depth(k), n
 	var right []T
-	if b.trans || (m >= copyRows && k*n >= copyArea) {
+	if b.trans || worthCopying(t, m, n, k, b) {
 		buffer := takeBuffer()
 		defer giveBuffer(buffer)
 		right = view[T](buffer)
