@@ -1,14 +1,16 @@
 package expansion
 
 import (
+	"math/cmplx"
+
 	"leadline/hamiltonian"
 	"leadline/hamiltonian/linalg"
 	"leadline/trial"
+	"leadline/trial/expansion/internal/lanes"
 )
 
 // coefficients is the matrix C of a trial state, up strings × down strings, of
-// which only the conjugate acts. Vectors of a batch are rows 2i (real) and 2i+1
-// (imaginary part) of walker i.
+// which only the conjugate acts, on batches of vectors laid out as [layout] says.
 type coefficients interface {
 	// contract sets y = C* d for the up strings (spin = Up, d of the down
 	// strings), or y = C†d for the down strings, for count walkers.
@@ -77,18 +79,11 @@ func (c *dense) contract(y, d []float64, count, spin int, scratch *[]float64) {
 	}
 }
 
-// sparse holds the nonzero elements of C*, row by row for each spin; 4 flops
-// (8 if complex) for each element and vector.
+// sparse holds the nonzero elements of C*, row by row for each spin, and acts in
+// lanes; 4 flops (8 if complex) for each element and vector.
 type sparse struct {
 	strings [2]int
-	lists   [2]rows // of up strings over down ones, and the other way
-}
-
-type rows struct {
-	start []int32
-	index []int32
-	re    []float64
-	im    []float64 // nil for a real C
+	rows    [2]lanes.Weights // up strings over down ones, and the other way
 }
 
 // element is one nonzero of C.
@@ -97,30 +92,24 @@ type element struct {
 	value complex128
 }
 
-// newSparse takes the elements sorted by up string, then down string.
 func newSparse(up, down int, elements []element, isComplex bool) *sparse {
 	c := &sparse{strings: [2]int{up, down}}
 	for spin, n := range c.strings {
-		r := &c.lists[spin]
-		r.start = make([]int32, n+1)
+		r := &c.rows[spin]
+		r.Real = !isComplex
+		r.Start = make([]int32, n+1)
 		for _, e := range elements {
-			r.start[e.at[spin]+1]++
+			r.Start[e.at[spin]+1]++
 		}
 		for k := range n {
-			r.start[k+1] += r.start[k]
+			r.Start[k+1] += r.Start[k]
 		}
-		r.index, r.re = make([]int32, len(elements)), make([]float64, len(elements))
-		if isComplex {
-			r.im = make([]float64, len(elements))
-		}
-		next := append([]int32(nil), r.start...)
+		r.List = make([]lanes.Weight, len(elements))
+		next := append([]int32(nil), r.Start...)
 		for _, e := range elements {
 			k := next[e.at[spin]]
 			next[e.at[spin]]++
-			r.index[k], r.re[k] = e.at[1-spin], real(e.value)
-			if isComplex {
-				r.im[k] = -imag(e.value)
-			}
+			r.List[k] = lanes.NewWeight(int(e.at[1-spin]), cmplx.Conj(e.value))
 		}
 	}
 	return c
@@ -128,27 +117,7 @@ func newSparse(up, down int, elements []element, isComplex bool) *sparse {
 
 func (c *sparse) contract(y, d []float64, count, spin int, _ *[]float64) {
 	n, other := c.strings[spin], c.strings[1-spin]
-	r := &c.lists[spin]
-	for w := range count {
-		dRe, dIm := d[2*w*other:][:other], d[(2*w+1)*other:][:other]
-		yRe, yIm := y[2*w*n:][:n], y[(2*w+1)*n:][:n]
-		for k := range yRe {
-			var re, im float64
-			from, to := r.start[k], r.start[k+1]
-			index, values := r.index[from:to], r.re[from:to]
-			for l, j := range index {
-				v := values[l]
-				re += v * dRe[j]
-				im += v * dIm[j]
-			}
-			if r.im != nil {
-				for l, j := range index {
-					v := r.im[int(from)+l]
-					re -= v * dIm[j]
-					im += v * dRe[j]
-				}
-			}
-			yRe[k], yIm[k] = re, im
-		}
+	for b := range blocks(count) {
+		c.rows[spin].Combine(numbers(y, b*n, n), numbers(d, b*other, other))
 	}
 }

@@ -7,14 +7,14 @@ import (
 	"leadline/hamiltonian/linalg"
 	"leadline/hamiltonian/strings"
 	"leadline/trial"
+	"leadline/trial/expansion/internal/lanes"
 )
 
 // doubles computes D_bj,ai = (E_bj d_down)ᵀ C† (E_ai d_up) of every walker of a
-// tile, b, a over particles and j, i over holes of the walker's own references.
-// dst holds for each walker the real product [Re; Im]·[Re | Im] of the two
-// complex factors, 2x_down × 2x_up; see combineComplex.
+// tile, x_down × x_up, b, a over particles and j, i over holes of the walker's own
+// references.
 type doubles interface {
-	mixed(dst []float64, a *doublesArea, up, down *form, count int)
+	mixed(dst []complex128, a *doublesArea, up, down *form, count int)
 }
 
 type doublesArea struct {
@@ -23,7 +23,10 @@ type doublesArea struct {
 	products []float64
 	half     []float64 // C† E_bj d: rows (excitation, walker, part)
 	full     []float64 // E_ai d of one walker: rows (part, excitation)
-	order    []int32   // walkers sorted by reference
+	result   []float64 // D of all walkers: [Re; Im]·[Re | Im], 2x_down × 2x_up
+	up, down excitations
+	terms    lanes.Terms
+	order    []int32 // walkers sorted by reference
 	groups   []group
 }
 
@@ -98,11 +101,12 @@ const (
 	halfMemory = 1 << 18
 )
 
-func (d *denseDoubles) mixed(dst []float64, a *doublesArea, up, down *form, count int) {
+func (d *denseDoubles) mixed(dst []complex128, a *doublesArea, up, down *form, count int) {
 	s := d.s
 	nUp := d.c.strings[hamiltonian.Up]
 	xUp, xDown := s.spaces[0].excitations(), s.spaces[1].excitations()
 	a.sortByReference(down, count)
+	a.result = trial.Grow(a.result, count*4*xUp*xDown)
 	d.excite(a, down)
 	step := max(1, halfMemory/(2*xDown*count*blockUnit)) * blockUnit
 	for from := 0; from < nUp; from += step {
@@ -124,7 +128,7 @@ func (d *denseDoubles) mixed(dst []float64, a *doublesArea, up, down *form, coun
 		for _, g := range a.groups {
 			for k := g.from; k < g.to; k++ {
 				i := int(a.order[k])
-				out := dst[i*4*xUp*xDown:][:4*xUp*xDown]
+				out := a.result[i*4*xUp*xDown:][:4*xUp*xDown]
 				if up.frames[i] == nil {
 					continue
 				}
@@ -134,6 +138,11 @@ func (d *denseDoubles) mixed(dst []float64, a *doublesArea, up, down *form, coun
 						a.full, width, beta, out[part*xDown*2*xUp:], 2*xUp)
 				}
 			}
+		}
+	}
+	for _, i := range a.order {
+		if up.frames[i] != nil {
+			combineComplex(dst[int(i)*xUp*xDown:], a.result[int(i)*4*xUp*xDown:], xDown, xUp)
 		}
 	}
 }
@@ -261,69 +270,50 @@ func (d *denseDoubles) exciteOne(dst []float64, up *form, i, from, to int) {
 	}
 }
 
-// sparseDoubles works walker by walker: for each down string J that occurs and
-// each excitation that leads to it, C† is applied to the one number; then
-// 8·S_up·x_up·x_down flops in a product.
+// sparseDoubles works through blocks of walkers in lanes, once for each pair of
+// references in a block, and excitations b, j: E_bj d_down, C† of it, and the sums
+// over up strings, 8·x_down·(elements of C + S_up-strings' excitations) flops in
+// all for each walker.
 type sparseDoubles struct {
 	s *Source
 	c *sparse
 }
 
-func (d *sparseDoubles) mixed(dst []float64, a *doublesArea, up, down *form, count int) {
-	s := d.s
-	nUp := d.c.strings[hamiltonian.Up]
-	xUp, xDown := s.spaces[0].excitations(), s.spaces[1].excitations()
-	a.half, a.full = trial.Grow(a.half, 2*xDown*nUp), trial.Grow(a.full, 2*xUp*nUp)
-	for i := range count {
-		if up.frames[i] == nil || down.frames[i] == nil {
-			continue
-		}
-		d.half(a.half, down, i)
-		s.spaces[0].exciteAll(a.full, up, i)
-		linalg.Gemm(false, true, 2*xDown, 2*xUp, nUp, 1, a.half, nUp, a.full, nUp, 0, dst[i*4*xUp*xDown:], 2*xUp)
-	}
+// excitations lists, for each excitation of a frame, the strings that it leads
+// to with the minor that it leads from.
+type excitations struct {
+	string, minor []int32
+	sign          []float64
+	start         []int32
 }
 
-// half writes C† E_bj d_down of walker i, rows (part, excitation).
-func (d *sparseDoubles) half(dst []float64, down *form, i int) {
-	space := d.s.spaces[hamiltonian.Down]
-	nUp, x, ne := d.c.strings[hamiltonian.Up], space.excitations(), space.electrons
-	list := &d.c.lists[hamiltonian.Down]
-	frame := down.frames[i]
-	m := down.minors[i*space.minors():][:space.minors()]
-	clear(dst[:2*x*nUp])
-	for number, at := range frame.place {
-		from, to := list.start[number], list.start[number+1]
-		index, values := list.index[from:to], list.re[from:to]
-		k, p, h := space.locate(int(at))
-		if k == 0 || len(index) == 0 {
-			continue
-		}
-		particles, holes := &space.particles.levels[k], &space.holes.levels[k]
-		below := space.holes.count(k - 1)
-		for r := range k {
-			row := m[space.offset[k-1]+int(particles.less[p*k+r])*below:][:below]
-			sign := frame.sign[number]
-			if r%2 == 1 {
-				sign = -sign
+func (d *sparseDoubles) mixed(dst []complex128, a *doublesArea, up, down *form, count int) {
+	s := d.s
+	nUp, nDown := d.c.strings[0], d.c.strings[1]
+	spaceUp, spaceDown := s.spaces[0], s.spaces[1]
+	xUp, xDown := spaceUp.excitations(), spaceDown.excitations()
+	a.half, a.full = trial.Grow(a.half, nUp*lanes.Size), trial.Grow(a.full, nDown*lanes.Size)
+	a.result = trial.Grow(a.result, xUp*lanes.Size)
+	for b := range blocks(count) {
+		mUp, mDown := up.blockMinors(spaceUp, b), down.blockMinors(spaceDown, b)
+		first, last := b*lanes.Width, min(count, (b+1)*lanes.Width)
+		for i := first; i < last; i++ {
+			if up.frames[i] == nil || down.frames[i] == nil || earlier(up, down, first, i) {
+				continue
 			}
-			for c := range k {
-				v := row[holes.less[h*k+c]]
-				vRe, vIm := sign*real(v), sign*imag(v)
-				sign = -sign
-				excitation := int(particles.member[p*k+r])*ne + int(holes.member[h*k+c])
-				re, im := dst[excitation*nUp:][:nUp], dst[(x+excitation)*nUp:][:nUp]
-				for l, q := range index {
-					f := values[l]
-					re[q] += f * vRe
-					im[q] += f * vIm
-				}
-				if list.im != nil {
-					values := list.im[from:to]
-					for l, q := range index {
-						f := values[l]
-						re[q] -= f * vIm
-						im[q] += f * vRe
+			spaceUp.list(&a.up, up.frames[i])
+			a.up.terms(&a.terms)
+			spaceDown.list(&a.down, down.frames[i])
+			for x := range xDown {
+				d.excite(a, x, mDown)
+				d.c.rows[hamiltonian.Up].Combine(a.half, a.full)
+				a.terms.Multiply(a.result, a.half, mUp, false)
+				for j := i; j < last; j++ {
+					if up.frames[j] == up.frames[i] && down.frames[j] == down.frames[i] {
+						for k := range xUp {
+							at := k*lanes.Size + j%lanes.Width
+							dst[(j*xDown+x)*xUp+k] = complex(a.result[at], a.result[at+lanes.Width])
+						}
 					}
 				}
 			}
@@ -331,34 +321,80 @@ func (d *sparseDoubles) half(dst []float64, down *form, i int) {
 	}
 }
 
-// exciteAll writes E_ai d of walker i for every string, rows (part, excitation).
-func (s *space) exciteAll(dst []float64, form *form, i int) {
-	frame := form.frames[i]
-	n, x := len(s.masks), s.excitations()
-	m := form.minors[i*s.minors():][:s.minors()]
-	clear(dst[:2*x*n])
-	for number, at := range frame.place {
-		k, p, h := s.locate(int(at))
-		if k == 0 {
-			continue
+// earlier reports whether a walker from first on and before i has the references
+// of walker i.
+func earlier(up, down *form, first, i int) bool {
+	for j := first; j < i; j++ {
+		if up.frames[j] == up.frames[i] && down.frames[j] == down.frames[i] {
+			return true
 		}
-		particles, holes := &s.particles.levels[k], &s.holes.levels[k]
-		below := s.holes.count(k - 1)
-		for r := range k {
-			row := m[s.offset[k-1]+int(particles.less[p*k+r])*below:][:below]
-			sign := frame.sign[number]
-			if r%2 == 1 {
-				sign = -sign
+	}
+	return false
+}
+
+// excite sets a.full to E_bj d_down for excitation number x, in lanes.
+func (d *sparseDoubles) excite(a *doublesArea, x int, m []float64) {
+	clear(a.full)
+	for k := a.down.start[x]; k < a.down.start[x+1]; k++ {
+		sign := a.down.sign[k]
+		from, to := numbers(m, int(a.down.minor[k]), 1), numbers(a.full, int(a.down.string[k]), 1)
+		for l := range lanes.Size {
+			to[l] = sign * from[l]
+		}
+	}
+}
+
+// terms turns a list into terms of products with the strings.
+func (e *excitations) terms(t *lanes.Terms) {
+	t.Reset()
+	for x := range len(e.start) - 1 {
+		for k := e.start[x]; k < e.start[x+1]; k++ {
+			t.List = append(t.List, lanes.NewTerm(int(e.string[k]), int(e.minor[k]), e.sign[k] < 0))
+		}
+		t.End()
+	}
+}
+
+// list sets e to the excitations of a frame.
+func (s *space) list(e *excitations, f *frame) {
+	x := s.excitations()
+	e.start = trial.Grow(e.start, x+2)
+	clear(e.start)
+	for pass := range 2 {
+		if pass == 1 {
+			for k := range x {
+				e.start[k+2] += e.start[k+1]
 			}
-			first := int(particles.member[p*k+r]) * s.electrons
-			for c := range k {
-				v := row[holes.less[h*k+c]]
-				to := (first+int(holes.member[h*k+c]))*n + number
-				dst[to], dst[x*n+to] = sign*real(v), sign*imag(v)
-				sign = -sign
+			n := int(e.start[x+1])
+			e.string, e.minor, e.sign = trial.Grow(e.string, n), trial.Grow(e.minor, n), trial.Grow(e.sign, n)
+		}
+		for number, at := range f.place {
+			k, p, h := s.locate(int(at))
+			if k == 0 {
+				continue
+			}
+			particles, holes := &s.particles.levels[k], &s.holes.levels[k]
+			below := s.holes.count(k - 1)
+			for r := range k {
+				for c := range k {
+					excitation := int(particles.member[p*k+r])*s.electrons + int(holes.member[h*k+c])
+					if pass == 0 {
+						e.start[excitation+2]++
+						continue
+					}
+					to := e.start[excitation+1]
+					e.start[excitation+1]++
+					e.string[to] = int32(number)
+					e.minor[to] = int32(s.offset[k-1]+int(particles.less[p*k+r])*below) + holes.less[h*k+c]
+					e.sign[to] = f.sign[number]
+					if (r+c)%2 == 1 {
+						e.sign[to] = -f.sign[number]
+					}
+				}
 			}
 		}
 	}
+	e.start = e.start[:x+1]
 }
 
 // locate returns size, particles and holes of a minor.

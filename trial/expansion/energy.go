@@ -4,6 +4,7 @@ import (
 	"leadline/hamiltonian"
 	"leadline/hamiltonian/linalg"
 	"leadline/trial"
+	"leadline/trial/expansion/internal/lanes"
 )
 
 // Energies implements [trial.EnergySource] by the formulas of the package
@@ -78,9 +79,8 @@ type energyArea struct {
 	signed   []float64
 	square   []float64 // product of two B
 	v        []complex128
-	second   []complex128
-	twice    []complex128
-	mixed    []float64 // D^ud of all walkers
+	second   [2][]float64 // second derivatives of F of one block, in lanes
+	mixed    []complex128 // D^ud of all walkers, times F
 	doubles  doublesArea
 }
 
@@ -179,42 +179,60 @@ func (e *energies) correlate(energy []complex128, a *energyArea, w trial.Walkers
 			a.dressed[spin] = e.factors[spin].dress(a.dressed[spin], a, one.form, w, spin)
 		}
 	}
-	both := x[0] > 0 && x[1] > 0
-	if both {
-		a.mixed = trial.Grow(a.mixed, w.Count*4*x[0]*x[1])
+	if x[0] > 0 && x[1] > 0 {
+		a.mixed = trial.Grow(a.mixed, w.Count*x[0]*x[1])
 		e.doubles.mixed(a.mixed, &a.doubles, up.form, down.form, w.Count)
 	}
-	for i := range w.Count {
-		if up.frames[i] == nil || down.frames[i] == nil || a.total[0][i] == 0 {
+	for b := range blocks(w.Count) {
+		for spin, one := range sides {
+			if spin == hamiltonian.Up || down != up {
+				s.curve(a, one, b, w.Count, spin)
+			}
+		}
+		for i := b * lanes.Width; i < min(w.Count, (b+1)*lanes.Width); i++ {
+			if up.frames[i] != nil && down.frames[i] != nil && a.total[0][i] != 0 {
+				energy[i] += 0.5 * e.cumulant(a, up, down, i, x, shared)
+			}
+		}
+	}
+}
+
+// curve sets the second derivatives of F of one spin for a block of walkers.
+func (s *Source) curve(a *energyArea, one *side, block, count, spin int) {
+	space := s.spaces[spin]
+	n, np := space.electrons, space.active-space.electrons
+	a.second[spin] = trial.Grow(a.second[spin], n*(n-1)/2*np*(np-1)/2*lanes.Size)
+	s.adjoin(one, block, count, spin)
+	space.secondDerivatives(a.second[spin], one.adjoint, one.blockMinors(space, block), one.levels[block])
+}
+
+// cumulant returns the sum over all pairs of spins for walker i.
+func (e *energies) cumulant(a *energyArea, up, down *side, i int, x [2]int, shared bool) complex128 {
+	var sum, first complex128
+	if shared && x[0] > 0 {
+		e.square(a, i, hamiltonian.Up, hamiltonian.Up, x)
+	}
+	for spin, one := range [2]*side{up, down} {
+		if x[spin] == 0 {
 			continue
 		}
-		var sum complex128
-		if shared && x[0] > 0 {
-			e.square(a, i, hamiltonian.Up, hamiltonian.Up, x)
+		if spin == hamiltonian.Down && down == up {
+			sum += first
+			continue
 		}
-		for spin, one := range sides {
-			if x[spin] == 0 {
-				continue
-			}
-			if !shared {
-				e.square(a, i, spin, spin, x)
-			}
-			if spin == hamiltonian.Up || down != up {
-				a.sum = trial.Grow(a.sum, 2)
-				a.sum[spin] = e.like(a, one, i, spin)
-				sum += a.sum[spin]
-			} else {
-				sum += a.sum[0]
-			}
+		if !shared {
+			e.square(a, i, spin, spin, x)
 		}
-		if both {
-			if !shared {
-				e.square(a, i, hamiltonian.Down, hamiltonian.Up, x)
-			}
-			sum += 2 * e.unlike(a, up, down, i, x)
-		}
-		energy[i] += 0.5 * sum
+		first = e.like(a, one, i, spin)
+		sum += first
 	}
+	if x[0] > 0 && x[1] > 0 {
+		if !shared {
+			e.square(a, i, hamiltonian.Down, hamiltonian.Up, x)
+		}
+		sum += 2 * e.unlike(a, up, down, i, x)
+	}
+	return sum
 }
 
 // square sets a.v to V_ai,bj = Σ_g s_g B^σ_g,ai B^σ'_g,bj of walker i: 8·ng flops
@@ -285,23 +303,14 @@ func (e *energies) like(a *energyArea, one *side, i, spin int) complex128 {
 			}
 		}
 	}
-	f := one.frames[i]
-	if f.levels < 2 {
-		return sum
-	}
-	a.second = trial.Grow(a.second, space.pairPart.count*space.pairHole.count)
-	a.twice = trial.Grow(a.twice, 2*space.minors())
-	m := one.minors[i*space.minors():][:space.minors()]
-	length := 2 * len(space.masks)
-	space.adjoint(one.adjoint, one.dual[i*length:][:length], f)
-	space.secondDerivatives(a.second, one.adjoint, m, f.levels, a.twice)
+	second, pairs, lane := a.second[spin], n*(n-1)/2, i%lanes.Width
 	var doubles complex128
 	for b := range np {
 		for p := range b {
-			row := a.second[pairNumber(p, b)*space.pairHole.count:]
 			for j := range n {
 				for k := range j {
-					doubles += row[pairNumber(k, j)] * (v[(p*n+k)*x+b*n+j] - v[(p*n+j)*x+b*n+k])
+					at := (pairNumber(p, b)*pairs+pairNumber(k, j))*lanes.Size + lane
+					doubles += complex(second[at], second[at+lanes.Width]) * (v[(p*n+k)*x+b*n+j] - v[(p*n+j)*x+b*n+k])
 				}
 			}
 		}
@@ -314,15 +323,13 @@ func (e *energies) like(a *energyArea, one *side, i, spin int) complex128 {
 func (e *energies) unlike(a *energyArea, up, down *side, i int, x [2]int) complex128 {
 	inverse := 1 / a.total[0][i]
 	v := a.v[:x[0]*x[1]]
-	mixed := a.mixed[4*i*x[0]*x[1]:][:4*x[0]*x[1]]
+	mixed := a.mixed[i*x[0]*x[1]:][:x[0]*x[1]]
 	wUp, wDown := up.gradient[i*x[0]:][:x[0]], down.gradient[i*x[1]:][:x[1]]
 	var sum complex128
-	for p := range x[1] {
-		upper, lower := mixed[2*x[0]*p:][:2*x[0]], mixed[2*x[0]*(x[1]+p):][:2*x[0]]
-		row := v[p*x[0] : (p+1)*x[0]]
-		for q, vv := range row {
-			d := complex(upper[q]-lower[x[0]+q], upper[x[0]+q]+lower[q])
-			sum += vv * (d*inverse - wDown[p]*wUp[q])
+	for p, w := range wDown {
+		d := mixed[p*x[0]:][:x[0]]
+		for q, vv := range v[p*x[0]:][:x[0]] {
+			sum += vv * (d[q]*inverse - w*wUp[q])
 		}
 	}
 	return sum

@@ -1,166 +1,165 @@
 package expansion
 
-import "slices"
+import "leadline/trial/expansion/internal/lanes"
 
-// computeMinors sets m to det θ[P,H] for all P, H of up to levels members;
-// theta is particles × holes, row-major. Expansion along the last row,
-//
-//	m(P,H) = Σ_j (−1)^(k+j) θ[p_k,h_j] m(P−p_k, H−h_j),   k = |P|, j = 1 … k,
-//
-// costs k complex multiplications for each minor, Σ_k k·C(n_h,k)·C(n_p,k) in all.
-func (s *space) computeMinors(m, theta []complex128, levels int) {
+// recursion holds the lists of the sums over strings, for minors of each size k.
+// All act on eight walkers at once; θ is particles × holes, row-major, and minors
+// are numbered as the space says.
+type recursion struct {
+	// expand: m(P,·) from row p_k of θ and m(P−p_k,·),
+	//
+	//	m(P,H) = Σ_j (−1)^(k+j) θ[p_k,h_j] m(P−p_k, H−h_j),   j = 1 … k.
+	expand []lanes.Terms
+	// Run backwards: adjoints g(P,·) act on row p_k of W by way of m(P−p_k,·), and
+	// on g(P−p_k,·) by way of row p_k of θ.
+	onRow, onBelow []lanes.Terms
+	// inner: Σ g(P,H) m(P,H) over the minors of one size.
+	inner []lanes.Terms
+	// pairs: ∂²m(P,·)/∂θ_ai∂θ_bj for each pair of holes i<j, summed with g(P,·),
+	// from m(P−a−b,·); even and odd by the places of a and b in P.
+	pairs [2][]lanes.Terms
+}
+
+func pairNumber(i, j int) int { return j*(j-1)/2 + i }
+
+func newRecursion(holes, particles *subsets) *recursion {
+	levels := len(holes.levels)
+	r := &recursion{
+		expand: make([]lanes.Terms, levels), onRow: make([]lanes.Terms, levels), onBelow: make([]lanes.Terms, levels),
+		pairs: [2][]lanes.Terms{make([]lanes.Terms, levels), make([]lanes.Terms, levels)},
+		inner: make([]lanes.Terms, levels),
+	}
+	for k := range levels {
+		r.inner[k].Reset()
+		for i := range holes.count(k) * particles.count(k) {
+			r.inner[k].List = append(r.inner[k].List, lanes.NewTerm(i, i, false))
+		}
+		r.inner[k].End()
+	}
+	for k := 1; k < levels; k++ {
+		l := &holes.levels[k]
+		row, below := make([][]lanes.Term, holes.n), make([][]lanes.Term, holes.count(k-1))
+		r.expand[k].Reset()
+		for h := range holes.count(k) {
+			for j := range k {
+				hole, rest, odd := int(l.member[h*k+j]), int(l.less[h*k+j]), (k-1-j)%2 == 1
+				r.expand[k].List = append(r.expand[k].List, lanes.NewTerm(hole, rest, odd))
+				row[hole] = append(row[hole], lanes.NewTerm(h, rest, odd))
+				below[rest] = append(below[rest], lanes.NewTerm(h, hole, odd))
+			}
+			r.expand[k].End()
+		}
+		collect(&r.onRow[k], row)
+		collect(&r.onBelow[k], below)
+		if k < 2 {
+			continue
+		}
+		next := &holes.levels[k-1]
+		for parity := range 2 {
+			pairs := make([][]lanes.Term, holes.n*(holes.n-1)/2)
+			for h := range holes.count(k) {
+				for y := range k {
+					for x := range y {
+						pair := pairNumber(int(l.member[h*k+x]), int(l.member[h*k+y]))
+						one := int(l.less[h*k+y]) // without the later member; the earlier keeps its place
+						pairs[pair] = append(pairs[pair], lanes.NewTerm(h, int(next.less[one*(k-1)+x]), (x+y+parity)%2 == 1))
+					}
+				}
+			}
+			collect(&r.pairs[parity][k], pairs)
+		}
+	}
+	return r
+}
+
+func collect(t *lanes.Terms, lists [][]lanes.Term) {
+	t.Reset()
+	for _, list := range lists {
+		t.List = append(t.List, list...)
+		t.End()
+	}
+}
+
+// numbers returns n numbers of an array of them from number at on.
+func numbers(x []float64, at, n int) []float64 { return x[at*lanes.Size : (at+n)*lanes.Size] }
+
+// computeMinors sets m to det θ[P,H] for all P, H of up to levels members, in
+// Σ_k k·C(n_h,k)·C(n_p,k) complex multiplications for each walker.
+func (s *space) computeMinors(m, theta []float64, levels int) {
 	nh := s.electrons
-	m[0] = 1
+	for l := range lanes.Width {
+		m[l], m[lanes.Width+l] = 1, 0
+	}
 	if levels == 0 {
 		return
 	}
-	copy(m[1:], theta[:s.offset[2]-1])
+	copy(numbers(m, 1, s.excitations()), theta)
 	for k := 2; k <= levels; k++ {
-		h, p := &s.holes.levels[k], &s.particles.levels[k]
+		p := &s.particles.levels[k]
 		width, below := s.holes.count(k), s.holes.count(k-1)
 		for r := range s.particles.count(k) {
-			row := theta[int(p.member[r*k+k-1])*nh:][:nh]
-			from := m[s.offset[k-1]+int(p.less[r*k+k-1])*below:][:below]
-			to := m[s.offset[k]+r*width:][:width]
-			expand(to, row, from, h.member, h.less, k)
+			s.lists.expand[k].Multiply(
+				numbers(m, s.offset[k]+r*width, width),
+				numbers(theta, int(p.member[r*k+k-1])*nh, nh),
+				numbers(m, s.offset[k-1]+int(p.less[r*k+k-1])*below, below), false)
 		}
 	}
 }
 
-// expand is one block of computeMinors: all column sets for one row set.
-func expand(to, row, from []complex128, member, less []int32, k int) {
-	for c := range to {
-		columns, rest := member[c*k:c*k+k], less[c*k:c*k+k]
-		rest = rest[:len(columns)]
-		var plus, minus complex128
-		j := k - 1
-		for ; j > 0; j -= 2 {
-			plus += row[columns[j]] * from[rest[j]]
-			minus += row[columns[j-1]] * from[rest[j-1]]
-		}
-		if j == 0 {
-			plus += row[columns[0]] * from[rest[0]]
-		}
-		to[c] = plus - minus
+// innerProduct sets sum, one number, to Σ g(P,H) m(P,H).
+func (s *space) innerProduct(sum, g, m []float64, levels int) {
+	for k := range levels + 1 {
+		n := s.offset[k+1] - s.offset[k]
+		s.lists.inner[k].Multiply(sum, numbers(g, s.offset[k], n), numbers(m, s.offset[k], n), k > 0)
 	}
 }
 
 // gradient sets w, particles × holes, to Σ g(P,H) ∂m(P,H)/∂θ by running
 // computeMinors backwards, at twice its cost. It destroys g.
-func (s *space) gradient(w, g, m, theta []complex128, levels int) {
+func (s *space) gradient(w, g, m, theta []float64, levels int) {
 	nh := s.electrons
-	clear(w[:s.excitations()])
+	clear(w[:s.excitations()*lanes.Size])
 	if levels == 0 {
 		return
 	}
 	for k := levels; k >= 2; k-- {
-		h, p := &s.holes.levels[k], &s.particles.levels[k]
+		p := &s.particles.levels[k]
 		width, below := s.holes.count(k), s.holes.count(k-1)
 		for r := range s.particles.count(k) {
 			last := int(p.member[r*k+k-1]) * nh
 			at := s.offset[k-1] + int(p.less[r*k+k-1])*below
-			expandBack(w[last:last+nh], g[at:at+below], g[s.offset[k]+r*width:][:width],
-				theta[last:last+nh], m[at:at+below], h.member, h.less, k)
+			block := numbers(g, s.offset[k]+r*width, width)
+			s.lists.onRow[k].Multiply(numbers(w, last, nh), block, numbers(m, at, below), true)
+			s.lists.onBelow[k].Multiply(numbers(g, at, below), block, numbers(theta, last, nh), true)
 		}
 	}
-	for i, v := range g[1:s.offset[2]] {
+	for i, v := range numbers(g, 1, s.excitations()) {
 		w[i] += v
 	}
 }
 
-// expandBack is one block of gradient.
-func expandBack(w, below, g, row, from []complex128, member, less []int32, k int) {
-	for c, v := range g {
-		if v == 0 {
-			continue
-		}
-		columns, rest := member[c*k:c*k+k], less[c*k:c*k+k]
-		rest = rest[:len(columns)]
-		for j := k - 1; j >= 0; j-- {
-			i, b := columns[j], rest[j]
-			w[i] += v * from[b]
-			below[b] += v * row[i]
-			v = -v
-		}
-	}
-}
-
-// pairs lists, for each size k ≥ 2 and each pair of things, the subsets that
-// hold the pair and what is left of them.
-type pairs struct {
-	count  int // n(n−1)/2; the pair i<j has number j(j−1)/2 + i
-	levels []pairLevel
-}
-
-// pairLevel holds C(n−2,k−2) terms for each pair.
-type pairLevel struct {
-	terms   int
-	with    []int32 // number of the subset
-	without []int32 // 2·(number without the pair, two sizes down), plus 1 where the two positions add up to an odd number
-}
-
-func pairNumber(i, j int) int { return j*(j-1)/2 + i }
-
-func newPairs(s *subsets) *pairs {
-	out := &pairs{count: s.n * (s.n - 1) / 2, levels: make([]pairLevel, len(s.levels))}
-	for k := 2; k < len(s.levels); k++ {
-		l, next := &s.levels[k], &s.levels[k-1]
-		with, without := make([][]int32, out.count), make([][]int32, out.count)
-		for r := range s.count(k) {
+// secondDerivatives sets d to Σ g(P,H) ∂²m(P,H)/∂θ_ai∂θ_bj for all a<b and i<j,
+// pairs of particles × pairs of holes. The others follow from antisymmetry in a,
+// b and in i, j. Complex multiplications for each walker:
+// Σ_k C(n_h,k)·C(n_p,k)·(k(k−1)/2)².
+func (s *space) secondDerivatives(d, g, m []float64, levels int) {
+	pairs := s.electrons * (s.electrons - 1) / 2
+	np := s.active - s.electrons
+	clear(d[:np*(np-1)/2*pairs*lanes.Size])
+	for k := 2; k <= levels; k++ {
+		p, next := &s.particles.levels[k], &s.particles.levels[k-1]
+		width, below := s.holes.count(k), s.holes.count(k-2)
+		for r := range s.particles.count(k) {
+			block := numbers(g, s.offset[k]+r*width, width)
 			for y := range k {
+				one := int(p.less[r*k+y])
 				for x := range y {
-					pair := pairNumber(int(l.member[r*k+x]), int(l.member[r*k+y]))
-					one := int(l.less[r*k+y]) // without the later member; the earlier keeps its place
-					with[pair] = append(with[pair], int32(r))
-					without[pair] = append(without[pair], 2*next.less[one*(k-1)+x]+int32((x+y)&1))
+					ab := pairNumber(int(p.member[r*k+x]), int(p.member[r*k+y]))
+					rest := int(next.less[one*(k-1)+x])
+					s.lists.pairs[(x+y)%2][k].Multiply(numbers(d, ab*pairs, pairs), block,
+						numbers(m, s.offset[k-2]+rest*below, below), true)
 				}
 			}
 		}
-		o := &out.levels[k]
-		o.terms = len(with[0])
-		o.with, o.without = slices.Concat(with...), slices.Concat(without...)
-	}
-	return out
-}
-
-// secondDerivatives sets d to Σ g(P,H) ∂²m(P,H)/∂θ_ai∂θ_bj for all a<b and i<j,
-// pairs of particles × pairs of holes; twice is work space for two numbers for
-// each minor. The others follow from antisymmetry in a, b and in i, j. Complex
-// multiplications: Σ_k C(n_h,k)·C(n_p,k)·(k(k−1)/2)².
-func (s *space) secondDerivatives(d, g, m []complex128, levels int, twice []complex128) {
-	pairs := s.pairHole.count
-	clear(d[:s.pairPart.count*pairs])
-	if levels < 2 {
-		return
-	}
-	twice = twice[:2*s.offset[levels-1]]
-	for i := range len(twice) / 2 {
-		twice[2*i], twice[2*i+1] = m[i], -m[i]
-	}
-	for k := 2; k <= levels; k++ {
-		width, below := s.holes.count(k), s.holes.count(k-2)
-		h, p := &s.pairHole.levels[k], &s.pairPart.levels[k]
-		for ab := range s.pairPart.count {
-			row := d[ab*pairs:][:pairs]
-			for t := ab * p.terms; t < (ab+1)*p.terms; t++ {
-				odd := p.without[t] & 1
-				from := twice[2*(s.offset[k-2]+int(p.without[t]>>1)*below):][:2*below]
-				addPairs(row, g[s.offset[k]+int(p.with[t])*width:][:width], from, h, odd)
-			}
-		}
-	}
-}
-
-// addPairs is one pair of particles in one set: all pairs of holes.
-func addPairs(row, g, twice []complex128, h *pairLevel, odd int32) {
-	n := h.terms
-	for ij := range row {
-		with, without := h.with[ij*n:][:n], h.without[ij*n:][:n]
-		without = without[:len(with)]
-		var sum complex128
-		for t, c := range with {
-			sum += g[c] * twice[without[t]^odd]
-		}
-		row[ij] += sum
 	}
 }

@@ -6,22 +6,25 @@ import (
 
 	"leadline/hamiltonian/linalg"
 	"leadline/trial"
+	"leadline/trial/expansion/internal/lanes"
 )
 
 // form is the pivoted form of one spin of the walkers of a tile: one block for
-// each walker in every array.
+// each walker in every array or, for arrays in lanes, one block for each eight
+// walkers (see package lanes).
 type form struct {
 	support  []float64    // S†φ: rows (walker, column, part), core+active numbers
 	exchange []complex128 // S†φ of one walker while columns and rows are exchanged
 	inverse  []complex128 // (φ_occ)⁻¹, columns of the walker × occupied orbitals (core, reference)
 	theta    []complex128 // Θ, particles × occupied orbitals
-	active   []complex128 // θ, its columns of the reference: particles × holes
+	active   []float64    // θ, the columns of the reference: particles × holes, in lanes
 	frames   []*frame     // nil where core or active rows have no full rank
 	spare    []frame
 	log      []float64 // ln |det φ_occ|
 	phase    []complex128
-	minors   []complex128
-	strings  []float64 // d: rows 2i and 2i+1, one number for each string
+	levels   []int     // size of the largest minor, for each block
+	minors   []float64 // in lanes
+	strings  []float64 // d, laid out as the coefficients want it
 	row, col []int     // pivots, in the order of occupied orbitals
 	taken    []bool    // rows, then columns
 }
@@ -29,8 +32,9 @@ type form struct {
 // side adds to a form what comes from the coefficients and the other spin.
 type side struct {
 	*form
-	dual     []float64    // y: rows 2i and 2i+1, one number for each string
-	adjoint  []complex128 // y of one walker in the order of the minors
+	dual     []float64    // y, laid out alike
+	adjoint  []float64    // y of one block in the order of the minors, in lanes
+	slope    []float64    // ∂F/∂θ of one block, in lanes
 	gradient []complex128 // W = ∂ ln F/∂θ, particles × holes
 	planes   []float64    // left factor of a density
 	product  []float64
@@ -48,34 +52,103 @@ func (s *Source) prepare(a *form, w trial.Walkers, spin int) {
 	a.exchange = trial.Grow(a.exchange, ns*n)
 	a.inverse = trial.Grow(a.inverse, count*n*n)
 	a.theta = trial.Grow(a.theta, count*np*n)
-	a.active = trial.Grow(a.active, count*space.excitations())
-	a.minors = trial.Grow(a.minors, count*space.minors())
-	a.strings = trial.Grow(a.strings, 2*count*len(space.masks))
 	a.log, a.phase = trial.Grow(a.log, count), trial.Grow(a.phase, count)
 	a.frames = trial.Grow(a.frames, count)
 	for len(a.spare) < count {
 		a.spare = append(a.spare, frame{})
 	}
+	x, blocks := space.excitations(), blocks(count)
+	a.active = trial.Grow(a.active, blocks*x*lanes.Size)
+	a.levels = trial.Grow(a.levels, blocks)
+	clear(a.active)
+	clear(a.levels)
 	for i := range count {
-		re := a.strings[2*i*len(space.masks):][:len(space.masks)]
-		im := a.strings[(2*i+1)*len(space.masks):][:len(space.masks)]
 		reference, ok := s.pivot(a, i, spin)
 		if !ok {
 			a.frames[i] = nil
-			clear(re)
-			clear(im)
 			continue
 		}
 		f := space.frame(reference, &a.spare[i])
 		a.frames[i] = f
+		a.levels[i/lanes.Width] = max(a.levels[i/lanes.Width], f.levels)
 		s.arrange(a, i, spin, f)
-		m := a.minors[i*space.minors():][:space.minors()]
-		space.computeMinors(m, a.active[i*space.excitations():], f.levels)
-		for k, at := range f.place {
-			v, sign := m[at], f.sign[k]
-			re[k], im[k] = sign*real(v), sign*imag(v)
+	}
+	a.minors = trial.Grow(a.minors, blocks*space.minors()*lanes.Size)
+	for b := range blocks {
+		space.computeMinors(a.blockMinors(space, b), numbers(a.active, b*x, x), a.levels[b])
+	}
+	v := s.layout(spin)
+	a.strings = trial.Grow(a.strings, v.size(count))
+	for i := range blocks * lanes.Width {
+		if i >= count && !v.lanes {
+			break
+		}
+		at, step, part := v.walker(i)
+		if i >= count || a.frames[i] == nil {
+			for range space.masks {
+				a.strings[at], a.strings[at+part] = 0, 0
+				at += step
+			}
+			continue
+		}
+		m := a.blockMinors(space, i/lanes.Width)[i%lanes.Width:]
+		f := a.frames[i]
+		for k, place := range f.place {
+			sign, from := f.sign[k], int(place)*lanes.Size
+			a.strings[at], a.strings[at+part] = sign*m[from], sign*m[from+lanes.Width]
+			at += step
 		}
 	}
+}
+
+// blocks returns the number of blocks of eight walkers.
+func blocks(count int) int { return (count + lanes.Width - 1) / lanes.Width }
+
+// blockMinors returns the minors of one block.
+func (a *form) blockMinors(s *space, block int) []float64 {
+	return numbers(a.minors, block*s.minors(), s.minors())
+}
+
+// layout says how a batch of vectors over the strings of one spin is laid out:
+// rows 2i and 2i+1 for real and imaginary part of walker i, or in lanes.
+type layout struct {
+	lanes bool
+	n     int // strings
+}
+
+func (s *Source) layout(spin int) layout {
+	_, lanes := s.c.(*sparse)
+	return layout{lanes: lanes, n: len(s.spaces[spin].masks)}
+}
+
+// size returns the length of a batch.
+func (v layout) size(count int) int {
+	if v.lanes {
+		return blocks(count) * v.n * lanes.Size
+	}
+	return 2 * count * v.n
+}
+
+// walker returns where the first string of walker i is, the distance to the next
+// string and that to the imaginary part.
+func (v layout) walker(i int) (at, step, part int) {
+	if v.lanes {
+		return i/lanes.Width*v.n*lanes.Size + i%lanes.Width, lanes.Size, lanes.Width
+	}
+	return 2 * i * v.n, 1, v.n
+}
+
+// inner returns Σ_I d_I y_I of walker i.
+func (v layout) inner(d, y []float64, i int) complex128 {
+	at, step, part := v.walker(i)
+	var re, im float64
+	for range v.n {
+		dRe, dIm, yRe, yIm := d[at], d[at+part], y[at], y[at+part]
+		re += dRe*yRe - dIm*yIm
+		im += dRe*yIm + dIm*yRe
+		at += step
+	}
+	return complex(re, im)
 }
 
 // projectOnSupport sets a.support.
@@ -279,64 +352,69 @@ func (s *Source) arrange(a *form, i, spin int, f *frame) {
 		}
 	}
 	theta := a.theta[i*np*n:][:np*n]
-	active := a.active[i*np*ne:][:np*ne]
+	first := i/lanes.Width*np*ne*lanes.Size + i%lanes.Width
 	for p, orbital := range f.orbital[ne:] {
 		from, to := x[(s.core+orbital)*n:][:n], theta[p*n:][:n]
 		for o, col := range a.col[:n] {
 			to[o] = from[col]
 		}
-		copy(active[p*ne:], to[s.core:])
+		for h, v := range to[s.core:] {
+			at := first + (p*ne+h)*lanes.Size
+			a.active[at], a.active[at+lanes.Width] = real(v), imag(v)
+		}
 	}
 }
 
-// weigh turns the dual vectors y into W = ∂ ln F/∂θ and returns
-// F = Σ_I d_I y_I for walker i; a zero or unusable F leaves W zero.
-func (s *Source) weigh(a *side, i, spin int) complex128 {
+// weigh turns the dual vectors y of a tile into W = ∂ ln F/∂θ and sets total to
+// F = Σ_I d_I y_I; a zero or unusable F leaves W zero.
+func (s *Source) weigh(a *side, total []complex128, count, spin int) {
 	space := s.spaces[spin]
-	nx := space.excitations()
-	w := a.gradient[i*nx:][:nx]
-	f := a.frames[i]
-	if f == nil {
-		clear(w)
-		return 0
-	}
-	ns := len(space.masks)
-	total := overlapOf(a.strings[2*i*ns:][:2*ns], a.dual[2*i*ns:][:2*ns])
-	if total == 0 || total != total {
-		clear(w)
-		return total
-	}
-	m := a.minors[i*space.minors():][:space.minors()]
-	space.adjoint(a.adjoint, a.dual[2*i*ns:][:2*ns], f)
-	space.gradient(w, a.adjoint, m, a.active[i*nx:], f.levels)
-	inverse := 1 / total
-	for k := range w {
-		w[k] *= inverse
-	}
-	return total
-}
-
-// adjoint writes a dual vector, real then imaginary parts, in the order of the
-// minors.
-func (s *space) adjoint(g []complex128, dual []float64, f *frame) {
-	n := len(s.masks)
-	re, im := dual[:n], dual[n:2*n]
-	clear(g[:s.offset[f.levels+1]])
-	for k, at := range f.place {
-		g[at] = complex(f.sign[k]*re[k], f.sign[k]*im[k])
+	x := space.excitations()
+	a.slope = trial.Grow(a.slope, x*lanes.Size)
+	a.gradient = trial.Grow(a.gradient, count*x)
+	var sums [lanes.Size]float64
+	for b := range blocks(count) {
+		m, levels := a.blockMinors(space, b), a.levels[b]
+		s.adjoin(a, b, count, spin)
+		space.innerProduct(sums[:], a.adjoint, m, levels)
+		space.gradient(a.slope, a.adjoint, m, numbers(a.active, b*x, x), levels)
+		for i := b * lanes.Width; i < min(count, (b+1)*lanes.Width); i++ {
+			w, lane := a.gradient[i*x:][:x], i%lanes.Width
+			total[i] = complex(sums[lane], sums[lanes.Width+lane])
+			if a.frames[i] == nil {
+				total[i] = 0
+			}
+			if total[i] == 0 || total[i] != total[i] {
+				clear(w)
+				continue
+			}
+			inverse := 1 / total[i]
+			for k := range w {
+				w[k] = inverse * complex(a.slope[k*lanes.Size+lane], a.slope[k*lanes.Size+lanes.Width+lane])
+			}
+		}
 	}
 }
 
-// overlapOf returns Σ_I d_I y_I; each holds real, then imaginary parts.
-func overlapOf(d, y []float64) complex128 {
-	n := len(d) / 2
-	dr, di, yr, yi := d[:n], d[n:], y[:n], y[n:]
-	var re, im float64
-	for k, v := range dr {
-		re += v*yr[k] - di[k]*yi[k]
-		im += v*yi[k] + di[k]*yr[k]
+// adjoin writes the dual vectors of a block in the order of the minors.
+func (s *Source) adjoin(a *side, block, count, spin int) {
+	space := s.spaces[spin]
+	a.adjoint = trial.Grow(a.adjoint, space.minors()*lanes.Size)
+	clear(a.adjoint[:space.offset[a.levels[block]+1]*lanes.Size])
+	v := s.layout(spin)
+	for i := block * lanes.Width; i < min(count, (block+1)*lanes.Width); i++ {
+		f := a.frames[i]
+		if f == nil {
+			continue
+		}
+		g := a.adjoint[i%lanes.Width:]
+		at, step, part := v.walker(i)
+		for k, place := range f.place {
+			sign, to := f.sign[k], int(place)*lanes.Size
+			g[to], g[to+lanes.Width] = sign*a.dual[at], sign*a.dual[at+part]
+			at += step
+		}
 	}
-	return complex(re, im)
 }
 
 // leftFactor sets a.planes to G′ with D = G′ φᵀ, (core+active)×N, real then

@@ -11,6 +11,7 @@ import (
 	"leadline/hamiltonian"
 	"leadline/hamiltonian/linalg"
 	"leadline/trial"
+	"leadline/trial/expansion/internal/lanes"
 )
 
 // Source is the trial source of an expansion. It implements [trial.EnergySource]
@@ -71,7 +72,7 @@ func New(e *Expansion) (*Source, error) {
 	for _, space := range s.spaces {
 		need = max(need, 32*space.minors()+64*len(space.masks))
 	}
-	s.tile = min(64, max(1, tileMemory/need))
+	s.tile = min(64, max(1, tileMemory/need/lanes.Width)*lanes.Width)
 	return s, nil
 }
 
@@ -264,7 +265,7 @@ func (s *Source) evaluate(a *area, w trial.Walkers, both bool) (up, down *side) 
 	for spin, one := range [2]*side{up, down} {
 		if spin == hamiltonian.Up || (both && down != up) {
 			other := [2]*side{down, up}[spin]
-			one.dual = trial.Grow(one.dual, 2*w.Count*len(s.spaces[spin].masks))
+			one.dual = trial.Grow(one.dual, s.layout(spin).size(w.Count))
 			s.c.contract(one.dual, other.strings, w.Count, spin, &a.planes)
 		}
 	}
@@ -276,13 +277,12 @@ func (s *Source) evaluate(a *area, w trial.Walkers, both bool) (up, down *side) 
 func (s *Source) Overlaps(dst []trial.Overlap, w trial.Walkers) {
 	a := s.scratch.Get()
 	defer s.scratch.Put(a)
-	n := len(s.spaces[0].masks)
+	v := s.layout(hamiltonian.Up)
 	for from := 0; from < w.Count; from += s.tile {
 		part := w.Slice(from, min(w.Count, from+s.tile))
 		up, down := s.evaluate(a, part, false)
 		for i := range part.Count {
-			f := overlapOf(up.strings[2*i*n:][:2*n], up.dual[2*i*n:][:2*n])
-			dst[from+i] = s.overlap(up, down, i, f)
+			dst[from+i] = s.overlap(up, down, i, v.inner(up.strings, up.dual, i))
 		}
 	}
 }
@@ -347,10 +347,6 @@ func (s *Source) weighAll(a *area, up, down *side, count int) {
 			copy(a.total[1], a.total[0])
 			break
 		}
-		one.adjoint = trial.Grow(one.adjoint, s.spaces[spin].minors())
-		one.gradient = trial.Grow(one.gradient, count*s.spaces[spin].excitations())
-		for i := range count {
-			a.total[spin][i] = s.weigh(one, i, spin)
-		}
+		s.weigh(one, a.total[spin], count, spin)
 	}
 }

@@ -9,73 +9,86 @@ import (
 	"testing"
 
 	"leadline/trial"
+	"leadline/trial/expansion/internal/lanes"
 	"leadline/trial/trialtest"
 )
 
 // Minors, gradient and second derivatives against determinants of submatrices
 // and finite differences, which are exact for polynomials of degree one in each
-// element.
+// element; other numbers in each lane.
 func TestMinors(t *testing.T) {
 	rng := rand.New(rand.NewPCG(1, 2))
-	gauss := func() complex128 { return complex(rng.NormFloat64(), rng.NormFloat64()) }
+	gauss := func(n int) []float64 {
+		x := make([]float64, n*lanes.Size)
+		for k := range x {
+			x[k] = rng.NormFloat64()
+		}
+		return x
+	}
 	for _, c := range []struct{ active, electrons int }{{1, 0}, {1, 1}, {3, 1}, {4, 2}, {6, 3}, {7, 3}, {7, 5}} {
 		s := newSpace(c.active, c.electrons, allStrings(c.active, c.electrons))
 		nh, np := c.electrons, c.active-c.electrons
-		theta := make([]complex128, s.excitations())
-		g := make([]complex128, s.minors())
-		for k := range theta {
-			theta[k] = gauss()
-		}
-		for k := range g {
-			g[k] = gauss()
-		}
 		levels := min(nh, np)
-		minors := func() []complex128 {
-			m := make([]complex128, s.minors())
-			s.computeMinors(m, theta, levels)
-			return m
-		}
-		m := minors()
-		for k := range levels + 1 {
-			for p, rows := range s.particles.levels[k].table.Masks() {
-				for h, columns := range s.holes.levels[k].table.Masks() {
-					want := submatrix(theta, nh, rows, columns)
-					if got := m[s.offset[k]+p*s.holes.count(k)+h]; cmplx.Abs(got-want) > 1e-12*(1+cmplx.Abs(want)) {
-						t.Fatalf("%v: minor of size %d is %v, expected %v", c, k, got, want)
+		theta, g := gauss(s.excitations()), gauss(s.minors())
+		m, w := make([]float64, s.minors()*lanes.Size), gauss(s.excitations())
+		second := gauss(np * (np - 1) / 2 * nh * (nh - 1) / 2)
+		s.computeMinors(m, theta, levels)
+		s.gradient(w, append([]float64(nil), g...), m, theta, levels)
+		s.secondDerivatives(second, g, m, levels)
+		sum := gauss(1)
+		s.innerProduct(sum, g, m, levels)
+		for lane := range lanes.Width {
+			at := func(x []float64, k int) complex128 {
+				return complex(x[k*lanes.Size+lane], x[k*lanes.Size+lanes.Width+lane])
+			}
+			near := func(what string, got, want complex128) {
+				t.Helper()
+				if cmplx.Abs(got-want) > 1e-11*(1+cmplx.Abs(want)) {
+					t.Fatalf("%v, lane %d: %s is %v, expected %v", c, lane, what, got, want)
+				}
+			}
+			one := make([]complex128, s.excitations())
+			for k := range one {
+				one[k] = at(theta, k)
+			}
+			value := func() complex128 {
+				var sum complex128
+				for k := range levels + 1 {
+					for p, rows := range s.particles.levels[k].table.Masks() {
+						for h, columns := range s.holes.levels[k].table.Masks() {
+							sum += at(g, s.offset[k]+p*s.holes.count(k)+h) * submatrix(one, nh, rows, columns)
+						}
+					}
+				}
+				return sum
+			}
+			for k := range levels + 1 {
+				for p, rows := range s.particles.levels[k].table.Masks() {
+					for h, columns := range s.holes.levels[k].table.Masks() {
+						near("minor", at(m, s.offset[k]+p*s.holes.count(k)+h), submatrix(one, nh, rows, columns))
 					}
 				}
 			}
-		}
-		value := func() complex128 {
-			var sum complex128
-			for k, v := range minors() {
-				sum += g[k] * v
+			near("value", at(sum, 0), value())
+			derivative := func(k int, f func() complex128) complex128 {
+				old := one[k]
+				one[k] = old + 1
+				up := f()
+				one[k] = old
+				return up - f()
 			}
-			return sum
-		}
-		derivative := func(k int, f func() complex128) complex128 {
-			old := theta[k]
-			theta[k] = old + 1
-			up := f()
-			theta[k] = old
-			return up - f()
-		}
-		w := make([]complex128, s.excitations())
-		s.gradient(w, append([]complex128(nil), g...), m, theta, levels)
-		for k := range w {
-			if want := derivative(k, value); cmplx.Abs(w[k]-want) > 1e-11*(1+cmplx.Abs(want)) {
-				t.Fatalf("%v: derivative %d is %v, expected %v", c, k, w[k], want)
+			for k := range one {
+				near("derivative", at(w, k), derivative(k, value))
 			}
-		}
-		second := make([]complex128, s.pairPart.count*s.pairHole.count)
-		s.secondDerivatives(second, g, m, levels, make([]complex128, 2*s.minors()))
-		for b := range np {
-			for a := range b {
-				for j := range nh {
-					for i := range j {
-						want := derivative(a*nh+i, func() complex128 { return derivative(b*nh+j, value) })
-						if got := second[pairNumber(a, b)*s.pairHole.count+pairNumber(i, j)]; cmplx.Abs(got-want) > 1e-11*(1+cmplx.Abs(want)) {
-							t.Fatalf("%v: second derivative %d%d %d%d is %v, expected %v", c, a, i, b, j, got, want)
+			if lane > 0 {
+				continue
+			}
+			for b := range np {
+				for a := range b {
+					for j := range nh {
+						for i := range j {
+							want := derivative(a*nh+i, func() complex128 { return derivative(b*nh+j, value) })
+							near("second derivative", at(second, pairNumber(a, b)*nh*(nh-1)/2+pairNumber(i, j)), want)
 						}
 					}
 				}

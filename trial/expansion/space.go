@@ -20,14 +20,14 @@ import (
 //
 // and the m are numbered alike for all references: by |P|, then P, then H.
 type space struct {
-	active, electrons  int
-	masks              []uint64 // the strings, in the order of the coefficients
-	holes, particles   *subsets
-	offset             []int // of the minors of size k; one more entry at the end
-	mu                 sync.RWMutex
-	frames             map[uint64]*frame
-	framesLeft         int // frames that may still be kept
-	pairHole, pairPart *pairs
+	active, electrons int
+	masks             []uint64 // the strings, in the order of the coefficients
+	holes, particles  *subsets
+	offset            []int // of the minors of size k; one more entry at the end
+	lists             *recursion
+	mu                sync.RWMutex
+	frames            map[uint64]*frame
+	framesLeft        int // frames that may still be kept
 }
 
 // frame says where the strings' minors are for one reference.
@@ -64,7 +64,7 @@ func newSpace(active, electrons int, masks []uint64) *space {
 		s.offset[k+1] = s.offset[k] + s.holes.count(k)*s.particles.count(k)
 	}
 	s.framesLeft = max(16, frameMemory/(bytesPerPlace*(len(masks)+1)))
-	s.pairHole, s.pairPart = newPairs(s.holes), newPairs(s.particles)
+	s.lists = newRecursion(s.holes, s.particles)
 	return s
 }
 
