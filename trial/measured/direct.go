@@ -3,6 +3,7 @@ package measured
 import (
 	"fmt"
 	"io"
+	"math"
 	"math/bits"
 
 	"leadline/hamiltonian"
@@ -184,7 +185,6 @@ func (d *Direct) affine(a *direct, row uint64) {
 	d.allMinors(a)
 	count := len(a.sum)
 	gain := d.inverse[0]
-	dimension := float64(uint64(1)<<(d.header.Qubits-1)) * 2
 	for _, s := range d.settings {
 		if err := a.basis.FromSetting(d.header, s); err != nil {
 			panic("measured: setting was not validated")
@@ -197,10 +197,10 @@ func (d *Direct) affine(a *direct, row uint64) {
 				y, v := a.basis.Coordinates(det)
 				if coset == u && v == u {
 					power := a.basis.Phase(yr) - a.basis.Phase(y) + 2*uint32(bits.OnesCount64(t&(y^yr)))
-					value = snapshot.Power(power) * complex(gain/float64(uint64(1)<<a.basis.K), 0)
+					value = snapshot.Power(power) * complex(math.Ldexp(gain, -a.basis.K), 0)
 				}
 				if det == row {
-					value -= complex((gain-1)/dimension, 0)
+					value -= complex(math.Ldexp(gain-1, -d.header.Qubits), 0)
 				}
 				if value == 0 {
 					continue

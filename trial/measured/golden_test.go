@@ -38,10 +38,7 @@ func TestGoldenOverlaps(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		source := func() (record.Stream, error) {
-			return record.Open(c.File, bytes.NewReader(file), int64(len(file)))
-		}
-		d, err := NewDirect(source, 2, 0, nil)
+		d, err := NewDirect(record.At(c.File, bytes.NewReader(file), int64(len(file))), 2, 0, nil)
 		if err != nil {
 			t.Fatal(err)
 		}

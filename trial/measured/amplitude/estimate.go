@@ -74,7 +74,7 @@ func (e *Estimate) Size() int { return e.Up.Len() * e.Down.Len() }
 
 // total returns Σ_b w_b c_b and Σ_b w_b.
 func (e *Estimate) total() ([]complex128, float64) {
-	sum := make([]complex128, e.Size())
+	sum := make([]complex128, len(e.Batches[0]))
 	all := 0.0
 	for b, batch := range e.Batches {
 		w := complex(e.Weights[b], 0)
@@ -167,14 +167,22 @@ func (e *Estimate) Clone() *Estimate {
 	return &c
 }
 
-// parallel calls do(i) for i < n on all cores.
-func parallel(n int, do func(i int)) {
+// parallel calls do(i, scratch) for i < n on all cores; every core has one
+// scratch vector of the given length, made when first asked for.
+func parallel(n, length int, do func(i int, scratch func() []complex128)) {
 	var next atomic.Int64
 	var wg sync.WaitGroup
 	for range min(n, runtime.GOMAXPROCS(0)) {
 		wg.Go(func() {
+			var own []complex128
+			scratch := func() []complex128 {
+				if own == nil {
+					own = make([]complex128, length)
+				}
+				return own
+			}
 			for i := int(next.Add(1)) - 1; i < n; i = int(next.Add(1)) - 1 {
-				do(i)
+				do(i, scratch)
 			}
 		})
 	}

@@ -18,22 +18,23 @@ type Form struct {
 // and may be called from several goroutines at once. nil means the identity.
 func (e *Estimate) NewForm(apply func(dst, src []complex128)) *Form {
 	sum, _ := e.total()
-	return e.newForm(sum, func(b int, scratch []complex128) []complex128 {
+	return e.newForm(sum, func(b int, scratch func() []complex128) []complex128 {
 		if apply == nil {
 			return e.Batches[b]
 		}
-		apply(scratch, e.Batches[b])
-		return scratch
+		dst := scratch()
+		apply(dst, e.Batches[b])
+		return dst
 	}, func(b int) []complex128 { return e.Batches[b] })
 }
 
 // newForm takes the left vector S, A·c_b and c_b as the caller provides them;
 // without batch it takes A·c_b for c_b too.
-func (e *Estimate) newForm(sum []complex128, image func(b int, scratch []complex128) []complex128, batch func(b int) []complex128) *Form {
+func (e *Estimate) newForm(sum []complex128, image func(b int, scratch func() []complex128) []complex128, batch func(b int) []complex128) *Form {
 	n := len(e.Batches)
 	f := &Form{weights: e.Weights, cross: make([]float64, n), own: make([]float64, n)}
-	parallel(n, func(b int) {
-		a := image(b, make([]complex128, len(sum)))
+	parallel(n, len(sum), func(b int, scratch func() []complex128) {
+		a := image(b, scratch)
 		c := a
 		if batch != nil {
 			c = batch(b)

@@ -110,13 +110,14 @@ func (e *Estimate) project(name string, apply func(dst, src []complex128)) Step 
 	for i := range sum {
 		sum[i] -= kept[i] // what is removed of S
 	}
-	f := e.newForm(sum, func(b int, scratch []complex128) []complex128 {
-		apply(scratch, e.Batches[b])
-		for i, v := range scratch {
-			// The batch keeps its projection, scratch the rest.
-			scratch[i], e.Batches[b][i] = e.Batches[b][i]-v, v
+	f := e.newForm(sum, func(b int, scratch func() []complex128) []complex128 {
+		rest := scratch()
+		apply(rest, e.Batches[b])
+		for i, v := range rest {
+			// The batch keeps its projection.
+			rest[i], e.Batches[b][i] = e.Batches[b][i]-v, v
 		}
-		return scratch
+		return rest
 	}, nil)
 	step := Step{Name: name, Removed: f.Plain(), Excess: f.Figure(), Linear: true}
 	step.Expected = step.Removed - step.Excess.Value

@@ -103,32 +103,34 @@ func (r *Report) declared(h *record.Header, e *amplitude.Estimate) {
 	if len(h.TopAmplitudes) == 0 {
 		return
 	}
-	top := make([]complex128, e.Size())
+	var top []complex128
+	var at []int
 	weight := 0.0
 	for i, u := range e.Up.Masks() {
 		for j, d := range e.Down.Masks() {
 			for _, a := range h.TopAmplitudes {
-				if h.Determinant(u, d) == a.Mask|h.AncillaMask() {
-					v := a.Value
-					if h.OrderSign(u, d) {
-						v = -v
-					}
-					top[i*e.Down.Len()+j] = v
-					weight += real(v)*real(v) + imag(v)*imag(v)
+				if h.Determinant(u, d) != a.Mask|h.AncillaMask() || a.Value == 0 {
+					continue
 				}
+				v := a.Value
+				if h.OrderSign(u, d) {
+					v = -v
+				}
+				top, at = append(top, v), append(at, i*e.Down.Len()+j)
+				weight += real(v)*real(v) + imag(v)*imag(v)
 			}
 		}
 	}
 	if weight == 0 {
 		return
 	}
-	part := e.Clone()
-	for _, batch := range part.Batches {
-		for i := range batch {
-			if top[i] == 0 {
-				batch[i] = 0
-			}
+	part := amplitude.Estimate{Weights: e.Weights}
+	for _, batch := range e.Batches {
+		few := make([]complex128, len(at))
+		for k, i := range at {
+			few[k] = batch[i]
 		}
+		part.Batches = append(part.Batches, few)
 	}
 	own := part.NewForm(nil)
 	inner := func(without int) float64 {
@@ -138,10 +140,8 @@ func (r *Report) declared(h *record.Header, e *amplitude.Estimate) {
 			if b == without {
 				continue
 			}
-			for i, a := range top {
-				if a != 0 {
-					sum += complex(e.Weights[b], 0) * cmplx.Conj(a) * batch[i]
-				}
+			for k, a := range top {
+				sum += complex(e.Weights[b], 0) * cmplx.Conj(a) * batch[k]
 			}
 			all += e.Weights[b]
 		}

@@ -2,6 +2,7 @@ package collapse
 
 import (
 	"cmp"
+	"fmt"
 	"math"
 	"math/bits"
 	"slices"
@@ -87,6 +88,10 @@ type preparer struct {
 // maxDirectBits bounds the tables over y to 64 MB a setting.
 const maxDirectBits = 22
 
+// maxTables bounds the tables of one setting, in numbers: random matchings need
+// a few thousand at most.
+const maxTables = 1 << 24
+
 // prepare evaluates the form of p's setting at every string and reduces its
 // outcomes to terms.
 func (w *preparer) prepare(p *prepared) error {
@@ -102,8 +107,8 @@ func (w *preparer) prepare(p *prepared) error {
 		if err := w.cliffordTerms(p); err != nil {
 			return err
 		}
-	} else {
-		w.matchingTerms(p)
+	} else if err := w.matchingTerms(p); err != nil {
+		return err
 	}
 	if len(p.terms) > 0 {
 		w.strings(p)
@@ -149,7 +154,7 @@ func (w *preparer) cliffordTerms(p *prepared) error {
 
 // matchingTerms groups the outcomes by the parities of the cycles, which fix
 // the table of weights.
-func (w *preparer) matchingTerms(p *prepared) {
+func (w *preparer) matchingTerms(p *prepared) error {
 	m := &w.matching
 	m.Set(w.header.Qubits, p.setting.Pairs)
 	m.Form(&w.form)
@@ -165,7 +170,7 @@ func (w *preparer) matchingTerms(p *prepared) {
 		p.decoded = append(p.decoded, decodedOutcome{parity, t, float64(o.Count)})
 	}
 	if len(p.decoded) == 0 {
-		return
+		return nil
 	}
 	slices.SortFunc(p.decoded, func(a, b decodedOutcome) int {
 		return cmp.Or(cmp.Compare(a.p, b.p), cmp.Compare(a.t, b.t))
@@ -186,6 +191,9 @@ func (w *preparer) matchingTerms(p *prepared) {
 	}
 	if anyDirect {
 		need += 2 << m.Bits
+	}
+	if need > maxTables {
+		return fmt.Errorf("setting %d: %d cycles with %d combinations of parities need %d weights, at most %d", p.setting.ID, len(m.Cycles), len(p.classes), need, maxTables)
 	}
 	p.tables = slices.Grow(p.tables, need)
 	var sum, one []float64
@@ -214,6 +222,7 @@ func (w *preparer) matchingTerms(p *prepared) {
 	if anyDirect {
 		p.terms = append(p.terms, term{kind: direct, table: sum})
 	}
+	return nil
 }
 
 // directPays decides between one pass over the strings for each outcome and a

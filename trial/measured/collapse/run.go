@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"io"
+	"math"
 	"sync"
 	"sync/atomic"
 
@@ -142,9 +143,13 @@ func (ps *pass) read(ctx context.Context, st record.Stream, full chan<- *chunk, 
 
 // chunkLimit is the number of settings that are prepared at once.
 func (p *plan) chunkLimit() int {
-	bytes := 32*len(p.rows) + 16*len(p.cols)
-	if p.header.Ensemble == record.Orthogonal {
+	bytes := 40*len(p.rows) + 16*len(p.cols)
+	switch p.header.Ensemble {
+	case record.Orthogonal:
 		bytes = 16 * p.target.size()
+	case record.Matching:
+		// The largest table of weights: cycles of three modes.
+		bytes += int(8 * math.Pow(3, float64(p.header.Qubits)/3))
 	}
 	return max(2, min(chunkSettings, chunkBytes/(bytes+1)))
 }

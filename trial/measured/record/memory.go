@@ -18,6 +18,18 @@ type Stream interface {
 // once.
 type Source func() (Stream, error)
 
+// At returns the source of a record at hand as a whole, such as a memory-mapped
+// file; see Open.
+func At(name string, r io.ReaderAt, size int64) Source {
+	return func() (Stream, error) {
+		rd, err := Open(name, r, size)
+		if err != nil {
+			return nil, err
+		}
+		return rd, nil
+	}
+}
+
 // Memory is a record held in memory, such as a simulated one.
 type Memory struct {
 	header   Header
