@@ -340,7 +340,7 @@ func TestGemmZeroFactor(t *testing.T) {
 // TestGemmSweep compares with gonum, every size from 1 to 130 and some larger.
 func TestGemmSweep(t *testing.T) {
 	rng := rand.New(rand.NewPCG(8, 1))
-	sizes := []int{191, 192, 193, 255, 257, 400}
+	sizes := []int{191, 192, 193, 255, 256, 257, 384, 400, 512}
 	for n := range 130 {
 		sizes = append(sizes, n+1)
 	}
