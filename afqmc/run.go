@@ -66,6 +66,9 @@ func (w *Walk) Run(ctx context.Context, rec Recorder) (*Result, error) {
 			row.Sampled = next > equilibration
 			if row.Sampled {
 				samples.add(row, w)
+				if o, ok := rec.(Observer); ok {
+					o.Observe(w)
+				}
 			}
 			if rec != nil {
 				if err := rec.Record(row); err != nil {

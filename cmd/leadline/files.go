@@ -1,7 +1,7 @@
 package main
 
 import (
-	"bytes"
+	"bufio"
 	"crypto/sha256"
 	"embed"
 	"encoding/hex"
@@ -141,18 +141,24 @@ func hash(data []byte) string {
 	return hex.EncodeToString(sum[:])
 }
 
+// mayWrite refuses a file that exists unless it may be replaced.
+func mayWrite(name string, overwrite bool) error {
+	if _, err := os.Stat(name); err == nil && !overwrite {
+		return fmt.Errorf("%s: exists already; choose another name or add --overwrite", name)
+	}
+	return nil
+}
+
 // writeFile writes a file so that it is there whole or not at all.
 func writeFile(name string, write func(io.Writer) error) error {
-	var buffer bytes.Buffer
-	if err := write(&buffer); err != nil {
-		return err
-	}
 	temporary, err := os.CreateTemp(filepath.Dir(name), ".leadline-*")
 	if err != nil {
 		return err
 	}
-	_, err = temporary.Write(buffer.Bytes())
-	err = errorsFirst(err, temporary.Chmod(0o644), temporary.Close())
+	buffer := bufio.NewWriterSize(temporary, 1<<20)
+	err = write(buffer)
+	err = errorsFirst(err, buffer.Flush(), temporary.Chmod(0o644))
+	err = errorsFirst(err, temporary.Close())
 	if err == nil {
 		err = os.Rename(temporary.Name(), name)
 	}

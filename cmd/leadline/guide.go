@@ -26,10 +26,12 @@ type guidance struct {
 	warnings  []afqmc.Warning
 	// expansion is the trial where it is one.
 	expansion *expansion.Expansion
+	// measured is the record behind it, if it was measured.
+	measured *measuredTrial
 }
 
 // newGuidance builds the trial that a job asks for.
-func newGuidance(ctx context.Context, j *job.Job, in *inputs, s *system) (*guidance, error) {
+func newGuidance(ctx context.Context, j *job.Job, in *inputs, s *system, progress progressFunc) (*guidance, error) {
 	g := &guidance{start: s.start.occupied, reference: j.Trial.Orbitals}
 	var source trial.Source
 	var err error
@@ -38,8 +40,8 @@ func newGuidance(ctx context.Context, j *job.Job, in *inputs, s *system) (*guida
 		source, err = g.determinant(ctx, j, in, s)
 	case "expansion":
 		source, err = g.expand(ctx, j, in, s)
-	default:
-		err = fmt.Errorf("trial kind %q is not available in this version", j.Trial.Kind)
+	case "measured":
+		source, err = g.measure(ctx, j, in, s, progress)
 	}
 	if err != nil {
 		return nil, err

@@ -68,7 +68,7 @@ func command(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 	root.SetOut(stdout)
 	root.SetErr(stderr)
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return usageError{err} })
-	root.AddCommand(runCommand(stderr), prepareCommand(stderr), exactCommand(stderr), surveyCommand(stderr), inspectCommand(stderr), initCommand(stderr))
+	root.AddCommand(runCommand(stderr), prepareCommand(stderr), exactCommand(stderr), surveyCommand(stderr), measureCommand(stderr), inspectCommand(stderr), initCommand(stderr))
 	root.CompletionOptions.HiddenDefaultCmd = true
 
 	err := root.ExecuteContext(ctx)

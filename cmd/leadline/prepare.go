@@ -31,8 +31,8 @@ func prepareCommand(stderr io.Writer) *cobra.Command {
 				return usageError{fmt.Errorf("-o FILE is needed")}
 			}
 			for _, name := range []string{output, expansionFile} {
-				if _, err := os.Stat(name); name != "" && err == nil && !overwrite {
-					return fmt.Errorf("%s: exists already; choose another name or add --overwrite", name)
+				if err := mayWrite(name, overwrite); name != "" && err != nil {
+					return err
 				}
 			}
 			return prepare(c.Context(), args[0], output, expansionFile, integrals, c.OutOrStdout(), display{out: stderr, quiet: quiet})

@@ -49,9 +49,15 @@ type summary struct {
 	Inputs            map[string]string   `json:"inputs"`
 	Warnings          []afqmc.Warning     `json:"warnings"`
 	Figures           map[string]*float64 `json:"figures"`
-	Failure           string              `json:"failure,omitempty"`
-	WallSeconds       float64             `json:"wall_seconds"`
-	Version           string              `json:"version"`
+	// What the shot noise of a measured trial does; absent for computed trials.
+	MeasurementError    *float64   `json:"measurement_error,omitempty"`
+	EnergyHalfRecords   []float64  `json:"energy_half_records,omitempty"`
+	HalfDifference      *float64   `json:"half_difference,omitempty"`
+	HalfDifferenceError *float64   `json:"half_difference_error,omitempty"`
+	WalkerSNR           *walkerSNR `json:"walker_snr,omitempty"`
+	Failure             string     `json:"failure,omitempty"`
+	WallSeconds         float64    `json:"wall_seconds"`
+	Version             string     `json:"version"`
 }
 
 // number returns a pointer to v, nil where it is not finite.
@@ -137,6 +143,14 @@ type series struct {
 	file   *os.File
 	writer *csv.Writer
 	show   func(afqmc.Row)
+	watch  *noiseWatch // nil for computed trials
+}
+
+// Observe implements afqmc.Observer.
+func (s *series) Observe(w *afqmc.Walk) {
+	if s.watch != nil {
+		s.watch.observe(w)
+	}
 }
 
 func newSeries(dir string, show func(afqmc.Row)) (*series, error) {

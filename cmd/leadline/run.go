@@ -130,7 +130,7 @@ func (r *jobRun) prepare(ctx context.Context) (err error) {
 	s, h := r.system, r.system.hamiltonian
 	r.say("%d orbitals, %d up and %d down electrons, %d factors (largest integral error %.1e), %d frozen orbitals",
 		h.Orbitals, h.Up, h.Down, h.Factors.Count(), s.residual, s.frozen+s.frozenBefore)
-	if r.guidance, err = newGuidance(ctx, r.job, r.in, s); err != nil {
+	if r.guidance, err = newGuidance(ctx, r.job, r.in, s, r.shown.stage); err != nil {
 		return err
 	}
 	g := r.guidance
@@ -191,6 +191,9 @@ func (r *jobRun) project(ctx context.Context) (err error) {
 	if err != nil {
 		return err
 	}
+	if m := r.guidance.measured; m != nil {
+		rows.watch = m.watch(int(r.options.Length / 0.05))
+	}
 	result, err := afqmc.Run(ctx, r.guidance.guide, r.guidance.start, r.options, rows)
 	if closed := rows.close(); err == nil {
 		err = closed
@@ -204,6 +207,13 @@ func (r *jobRun) project(ctx context.Context) (err error) {
 	}
 	out.add(result)
 	out.Warnings = slices.Concat([]afqmc.Warning{}, r.system.warnings, r.guidance.warnings, out.Warnings)
+	if err := writeSummary(r.dir, out); err != nil || r.guidance.measured == nil || !result.Sampled || result.Status == afqmc.StatusInterrupted {
+		return err
+	}
+	if err := r.guidance.measured.report(ctx, r, rows.watch); err != nil {
+		return err
+	}
+	out.WallSeconds = time.Since(r.begun).Seconds()
 	return writeSummary(r.dir, out)
 }
 
@@ -288,6 +298,17 @@ func (r *jobRun) print(w io.Writer) error {
 		fmt.Fprintf(&b, "  energy       %s %s\n", quoted(*out.Energy, *out.Error), unit)
 		fmt.Fprintf(&b, "               one standard error, statistics only; not in it: time step,\n")
 		fmt.Fprintf(&b, "               population, bias of the phaseless constraint\n")
+	}
+	if out.MeasurementError != nil {
+		fmt.Fprintf(&b, "  measurement  ±%.2g %s from the shot noise of the record, beside the error above\n", *out.MeasurementError, unit)
+	}
+	if len(out.EnergyHalfRecords) == 2 && out.HalfDifference != nil && out.HalfDifferenceError != nil {
+		fmt.Fprintf(&b, "  half records %s and %s, difference %s\n", minus(fmt.Sprintf("%.5f", out.EnergyHalfRecords[0])),
+			minus(fmt.Sprintf("%.5f", out.EnergyHalfRecords[1])), quoted(*out.HalfDifference, *out.HalfDifferenceError))
+	}
+	if out.WalkerSNR != nil {
+		fmt.Fprintf(&b, "  walkers      signal to shot noise %.3g on average, %.3g at the first percentile, %.2g of the weight below 3\n",
+			out.WalkerSNR.Mean, out.WalkerSNR.P01, out.WalkerSNR.Below3)
 	}
 	if out.MeanFieldEnergy != nil {
 		fmt.Fprintf(&b, "  mean field   %s %s (%s)\n", quoted(*out.MeanFieldEnergy, 0), unit, r.guidance.reference)
