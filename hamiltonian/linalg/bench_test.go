@@ -92,23 +92,6 @@ func BenchmarkLogDetBatch(b *testing.B) {
 	}
 }
 
-func BenchmarkOrthonormalize(b *testing.B) {
-	for _, s := range [][2]int{{20, 5}, {100, 20}, {200, 40}} {
-		rows, cols := s[0], s[1]
-		a := random[float64](rand.New(rand.NewPCG(1, 6)), rows*2*cols)
-		x := append([]float64(nil), a...)
-		b.Run(fmt.Sprintf("%dx%d", rows, cols), func(b *testing.B) {
-			for b.Loop() {
-				copy(x, a)
-				if _, err := Orthonormalize(rows, cols, x, 2*cols); err != nil {
-					b.Fatal(err)
-				}
-			}
-			gflops(b, 16*float64(rows*cols*cols))
-		})
-	}
-}
-
 func BenchmarkPfaffian(b *testing.B) {
 	for _, n := range []int{10, 40} {
 		re := random[float64](rand.New(rand.NewPCG(1, 7)), n*n)
