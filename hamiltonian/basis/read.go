@@ -12,8 +12,13 @@ import (
 // Limits of what a reader accepts: well beyond any published set, small enough
 // that a damaged count cannot ask for much memory.
 const (
-	maxPrimitives = 1000
-	maxLine       = 1 << 16
+	maxPrimitives  = 1000
+	maxLine        = 1 << 16
+	least, most    = 1e-9, 1e12 // exponents, bohr⁻²
+	maxCoefficient = 1e10
+	// cancelling is the norm of a shell, relative to that of its primitives, below
+	// which they leave nothing but rounding.
+	cancelling = 1e-8
 )
 
 // Read reads a basis set from text. An element begins with its symbol and a
@@ -153,7 +158,7 @@ func (p *parser) shell(head []string) ([]Shell, error) {
 		if scale, err = number(head[2]); err != nil {
 			return nil, fmt.Errorf("scale factor: %w", err)
 		}
-		if scale <= 0 {
+		if !(scale > 0) {
 			return nil, fmt.Errorf("scale factor is %v, expected a positive number", scale)
 		}
 	}
@@ -174,13 +179,16 @@ func (p *parser) shell(head []string) ([]Shell, error) {
 			return nil, fmt.Errorf("exponent: %w", err)
 		}
 		exponent *= scale * scale
-		if !(exponent > 0) || math.IsInf(exponent, 0) {
-			return nil, fmt.Errorf("exponent is %s, expected a positive number", words[0])
+		if !(exponent >= least && exponent <= most) {
+			return nil, fmt.Errorf("exponent is %v, expected a positive number from %.0e to %.0e", exponent, least, most)
 		}
 		for i := range shells {
 			c, err := number(words[1+i])
 			if err != nil {
 				return nil, fmt.Errorf("coefficient: %w", err)
+			}
+			if math.Abs(c) > maxCoefficient {
+				return nil, fmt.Errorf("coefficient is %v, expected at most %.0e", c, maxCoefficient)
 			}
 			shells[i].Exponents = append(shells[i].Exponents, exponent)
 			shells[i].Coefficients = append(shells[i].Coefficients, c)
@@ -194,18 +202,25 @@ func (p *parser) shell(head []string) ([]Shell, error) {
 	return shells, nil
 }
 
+// check refuses shells that have no well-defined normalised form.
 func (s Shell) check() error {
-	zero := true
+	norm, sum := 0.0, 0.0
 	for i, a := range s.Exponents {
-		zero = zero && s.Coefficients[i] == 0
-		for _, b := range s.Exponents[:i] {
-			if a == b {
+		for j, b := range s.Exponents {
+			if a == b && i != j {
 				return fmt.Errorf("exponent %v appears twice in one shell", a)
 			}
+			// Overlap of normalised primitives.
+			overlap := math.Pow(4*a/(a+b)*b/(a+b), 0.75+0.5*float64(s.L))
+			norm += s.Coefficients[i] * s.Coefficients[j] * overlap
 		}
+		sum += s.Coefficients[i] * s.Coefficients[i]
 	}
-	if zero {
+	if sum == 0 {
 		return fmt.Errorf("all coefficients of the shell are zero")
+	}
+	if norm < cancelling*sum {
+		return fmt.Errorf("the primitives of the shell cancel: norm² %.1e of %.1e", norm, sum)
 	}
 	return nil
 }

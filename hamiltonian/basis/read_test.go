@@ -60,7 +60,7 @@ func TestReadErrors(t *testing.T) {
 		{"H 0\n****\n", "line 2: element H has no shells"},
 		{"H 0\nHe 0\nS 1\n1 1\n", "line 2: element H has no shells"},
 		{"H 0\nS 1\n1 1\n****\nH 0\n", "line 5: element H is given twice"},
-		{"H 0\nS 1\n-1.5 1\n", "line 3: exponent is -1.5, expected a positive number"},
+		{"H 0\nS 1\n-1.5 1\n", "line 3: exponent is -1.5, expected a positive number from 1e-09 to 1e+12"},
 		{"H 0\nS 1\n0 1\n", "line 3: exponent is 0, expected a positive number"},
 		{"H 0\nS 1\nNaN 1\n", `line 3: exponent: found "NaN", expected a finite number`},
 		{"H 0\nS 1\n1e400 1\n", `line 3: exponent: found "1e400", expected a finite number`},
@@ -74,6 +74,9 @@ func TestReadErrors(t *testing.T) {
 		{"H 0\nS\n1 1\n", "line 2: shell line has 1 words"},
 		{"H 0\nS 2\n1 1\n1 2\n", "line 4: exponent 1 appears twice"},
 		{"H 0\nS 1\n1 0\n", "line 3: all coefficients of the shell are zero"},
+		{"H 0\nS 1\n1e13 1\n", "line 3: exponent is 1e+13, expected a positive number from"},
+		{"H 0\nS 1\n1 1e99\n", "line 3: coefficient is 1e+99, expected at most 1e+10"},
+		{"H 0\nS 2\n1 1\n1.00001 -1\n", "line 4: the primitives of the shell cancel"},
 		{"H 0\n" + strings.Repeat("x", 1<<17), "line 2: longer than 65536 characters"},
 	} {
 		_, err := basis.Read(strings.NewReader(c.text), "mine")
@@ -102,7 +105,7 @@ func FuzzRead(f *testing.F) {
 					t.Fatalf("accepted a shell of the wrong shape: %v", s)
 				}
 				for _, a := range s.Exponents {
-					if !(a > 0) {
+					if !(a >= 1e-9 && a <= 1e12) {
 						t.Fatalf("accepted exponent %v", a)
 					}
 				}

@@ -79,10 +79,13 @@ type Result struct {
 // by the root of their eigenvalues (canonical orthogonalisation: Löwdin, Adv.
 // Phys. 5, 1 (1956)).
 //
-// Costs for n functions and g factors: integrals as package integral states,
-// 2·n²·g² flops for the factorisation's rows n(n+1)/2, 4·n³·g for the passage to
-// orbitals, memory n²·g numbers. The work uses GOMAXPROCS goroutines; the result
-// does not depend on their number.
+// Costs for n functions and g factors: integrals as package integral states, n²·g²
+// flops for the factorisation, 4·n³·g for the passage to orbitals, memory n²·g
+// numbers. On two cores with AVX-512, tolerance 1e-5: water cc-pVTZ (58 functions,
+// 353 factors) in 0.2 s, benzene cc-pVDZ (114, 705) in about 1 s and 240 MB. Time
+// grows as n^2 to n^2.5 between 50 and 200 functions (chains of hydrogen atoms,
+// cc-pVDZ), as n^4 in the end. The work uses GOMAXPROCS goroutines; the result does
+// not depend on their number.
 func Build(ctx context.Context, g Geometry, set *basis.Set, o Options) (*Result, error) {
 	if o.Tolerance == 0 {
 		o.Tolerance = defaultTolerance

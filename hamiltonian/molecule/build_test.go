@@ -354,3 +354,22 @@ func BenchmarkBuild(b *testing.B) {
 		})
 	}
 }
+
+// The bounds of what a basis may hold: finite numbers come out, and the energy of
+// an electron is that of the function that matters.
+func TestExtremeExponents(t *testing.T) {
+	text := "H 0\nS 1\n1e12 1\nS 1\n0.2829421 1\nS 1\n1e-9 1\nI 1\n1e12 1\nI 1\n1e-9 1\n"
+	s, err := basis.Read(strings.NewReader(text), "extreme")
+	if err != nil {
+		t.Fatal(err)
+	}
+	r, err := molecule.Build(context.Background(), molecule.Geometry{{Z: 1}}, s, molecule.Options{Unpaired: 1})
+	if err != nil {
+		t.Fatal(err)
+	}
+	// One Gaussian gives −4/(3π) at the exponent 8/(9π) (the textbook example of the
+	// variation principle; Szabo and Ostlund, exercise 1.18, from memory).
+	if e := energy(t, r, meanfield.UHF).Energy; math.Abs(e+4/(3*math.Pi)) > 2e-4 {
+		t.Errorf("energy %.6f, expected %.6f", e, -4/(3*math.Pi))
+	}
+}

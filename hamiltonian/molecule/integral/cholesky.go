@@ -32,8 +32,9 @@ const (
 // Cholesky holds factors of the repulsion integrals, (pq|rs) ≈ Σ_g L^g_pq L^g_rs.
 type Cholesky struct {
 	// Residual is the largest error left on any diagonal integral (pq|pq),
-	// hartree. The error matrix is positive semidefinite but for the rows left
-	// out of computation, so no integral is off by more than Residual.
+	// hartree. By the inequality of Schwarz no other integral is off by more than
+	// the tolerance asked for: the error matrix is positive semidefinite but for
+	// rows that were dropped when their errors were a thousandth of it.
 	Residual float64
 	// Quartets counts the quartets of shell pairs evaluated.
 	Quartets int64

@@ -2,7 +2,6 @@ package integral
 
 import (
 	"context"
-	"fmt"
 	"math"
 	"runtime"
 	"slices"
@@ -77,6 +76,41 @@ func TestFactorise(t *testing.T) {
 			t.Errorf("tolerance %.0e: %d factors after %d, at most %d", tolerance, c.Count(), previous, hamiltonian.Pairs(f.Count()))
 		}
 		previous = c.Count()
+	}
+}
+
+// Clusters far apart: most rows are dropped early, and still no integral is off by
+// more than the tolerance.
+func TestFactoriseFarApart(t *testing.T) {
+	var shells []Shell
+	for i := range 5 {
+		for l := range 2 {
+			shells = append(shells, Shell{Center: [3]float64{0, 0.3 * float64(i%2), 5 * float64(i)}, L: l, Exponents: []float64{0.9, 0.4}, Coefficients: []float64{1, 1}})
+		}
+	}
+	f := New(shells, false)
+	exact := f.Repulsion()
+	const tolerance = 1e-4
+	c, err := f.Factorise(context.Background(), tolerance, nil)
+	if err != nil {
+		t.Fatal(err)
+	}
+	dropped := 0
+	for _, p := range f.pairs {
+		if p.largest*exact.At(0, 0) < damping*damping*tolerance*tolerance {
+			dropped++
+		}
+	}
+	if dropped == 0 {
+		t.Error("no pair of shells is small enough to be dropped")
+	}
+	got := rebuilt(c, f.Count())
+	for p := range got {
+		for q := range got {
+			if e := math.Abs(exact.At(p, q) - got[p][q]); e > tolerance {
+				t.Errorf("integral (%d|%d) is off by %.1e", p, q, e)
+			}
+		}
 	}
 }
 
@@ -158,7 +192,7 @@ func BenchmarkQuartet(b *testing.B) {
 			recurrence := 2 * (l + 1) * (l + 2) * (l + 3) * (l + 4) / 24
 			flops += n*m*(recurrence+2*float64(k.count)*hb*hk) + 2*float64(k.count*len(bra.rows))*n*hb
 		}
-		b.Run(fmt.Sprintf("%s", c.name), func(b *testing.B) {
+		b.Run(c.name, func(b *testing.B) {
 			for b.Loop() {
 				q.columns(f.pairs, &k, out, f.rows)
 			}
