@@ -1,12 +1,9 @@
 package expansion
 
 import (
-	"math/cmplx"
-
 	"leadline/hamiltonian"
 	"leadline/hamiltonian/linalg"
 	"leadline/trial"
-	"leadline/trial/expansion/internal/lanes"
 )
 
 // coefficients is the matrix C of a trial state, up strings × down strings, of
@@ -70,54 +67,6 @@ func (c *dense) contract(y, d []float64, count, spin int, scratch *[]float64) {
 	*scratch = trial.Grow(*scratch, 4*count*n)
 	c.to[spin].Mul(2*count, 1, d, other, 0, *scratch, 2*n)
 	for i := range count {
-		re, im := (*scratch)[4*i*n:][:2*n], (*scratch)[(4*i+2)*n:][:2*n]
-		yRe, yIm := y[2*i*n:][:n], y[(2*i+1)*n:][:n]
-		for k := range n {
-			yRe[k] = re[k] - im[n+k]
-			yIm[k] = re[n+k] + im[k]
-		}
-	}
-}
-
-// sparse holds the nonzero elements of C*, row by row for each spin, and acts in
-// lanes; 4 flops (8 if complex) for each element and vector.
-type sparse struct {
-	strings [2]int
-	rows    [2]lanes.Weights // up strings over down ones, and the other way
-}
-
-// element is one nonzero of C.
-type element struct {
-	at    [2]int32 // up and down string
-	value complex128
-}
-
-func newSparse(up, down int, elements []element, isComplex bool) *sparse {
-	c := &sparse{strings: [2]int{up, down}}
-	for spin, n := range c.strings {
-		r := &c.rows[spin]
-		r.Real = !isComplex
-		r.Start = make([]int32, n+1)
-		for _, e := range elements {
-			r.Start[e.at[spin]+1]++
-		}
-		for k := range n {
-			r.Start[k+1] += r.Start[k]
-		}
-		r.List = make([]lanes.Weight, len(elements))
-		next := append([]int32(nil), r.Start...)
-		for _, e := range elements {
-			k := next[e.at[spin]]
-			next[e.at[spin]]++
-			r.List[k] = lanes.NewWeight(int(e.at[1-spin]), cmplx.Conj(e.value))
-		}
-	}
-	return c
-}
-
-func (c *sparse) contract(y, d []float64, count, spin int, _ *[]float64) {
-	n, other := c.strings[spin], c.strings[1-spin]
-	for b := range blocks(count) {
-		c.rows[spin].Combine(numbers(y, b*n, n), numbers(d, b*other, other))
+		combine(y[2*i*n:], y[(2*i+1)*n:], (*scratch)[4*i*n:], 1, n)
 	}
 }

@@ -21,6 +21,7 @@ type window struct {
 	orbitals, core, active int
 	up, down               int // active electrons
 	list                   int // determinants; 0 for all
+	rank                   int // of C; 0 for full rank
 	imaginary              bool
 	symmetric              bool // C = Cᵀ
 	rotated                bool // orbitals of its own
@@ -37,7 +38,7 @@ var windows = []window{
 	{name: "complex", orbitals: 6, core: 1, active: 4, up: 1, down: 3, imaginary: true},
 	{name: "symmetric", orbitals: 5, core: 1, active: 4, up: 2, down: 2, symmetric: true},
 	{name: "symmetric complex", orbitals: 5, active: 4, up: 2, down: 2, symmetric: true, imaginary: true},
-	{name: "triple excitations", orbitals: 7, active: 6, up: 3, down: 3},
+	{name: "triple excitations", orbitals: 7, active: 6, up: 3, down: 2},
 	{name: "rotated", orbitals: 6, core: 1, active: 4, up: 2, down: 1, rotated: true},
 	{name: "rotated full", orbitals: 5, active: 5, up: 2, down: 2, rotated: true, imaginary: true},
 	{name: "full space", orbitals: 5, active: 5, up: 3, down: 2},
@@ -57,6 +58,9 @@ var windows = []window{
 	{name: "selected complex", orbitals: 6, active: 6, up: 3, down: 2, list: 9, imaginary: true},
 	{name: "selected symmetric", orbitals: 6, active: 5, up: 3, down: 3, list: 4, symmetric: true},
 	{name: "selected rotated", orbitals: 6, core: 1, active: 5, up: 2, down: 1, list: 4, rotated: true},
+	{name: "low rank", orbitals: 6, core: 1, active: 5, up: 2, down: 2, rank: 2},
+	{name: "low rank complex", orbitals: 6, core: 0, active: 5, up: 3, down: 2, rank: 3, imaginary: true},
+	{name: "low rank symmetric", orbitals: 6, core: 1, active: 5, up: 2, down: 2, rank: 1, symmetric: true},
 }
 
 func (c window) expansion(t testing.TB, seed uint64) *Expansion {
@@ -73,7 +77,32 @@ func (c window) expansion(t testing.TB, seed uint64) *Expansion {
 			e.Determinants = append(e.Determinants, Determinant{Up: a, Down: b, Amplitude: v})
 		}
 	}
-	if c.symmetric {
+	if c.rank > 0 {
+		gauss := func() complex128 {
+			if c.imaginary {
+				return complex(rng.NormFloat64(), rng.NormFloat64())
+			}
+			return complex(rng.NormFloat64(), 0)
+		}
+		for k := range e.Determinants {
+			e.Determinants[k].Amplitude = 0
+		}
+		for range c.rank {
+			left, right := make([]complex128, up.Len()), make([]complex128, down.Len())
+			for _, x := range [][]complex128{left, right} {
+				for k := range x {
+					x[k] = gauss()
+				}
+			}
+			if c.symmetric {
+				copy(right, left)
+			}
+			for k := range e.Determinants {
+				e.Determinants[k].Amplitude += left[k/down.Len()] * right[k%down.Len()]
+			}
+		}
+	}
+	if c.symmetric && c.rank == 0 {
 		n := down.Len()
 		for i := range n {
 			for j := range i {
@@ -199,8 +228,31 @@ func TestConformance(t *testing.T) {
 			if err != nil {
 				t.Fatal(err)
 			}
+			checkForm(t, c, s)
 			trialtest.Run(t, c.hamiltonian(), s, specialWalkers(e, 21))
 		})
+	}
+}
+
+// checkForm makes sure that the windows cover all forms of the coefficients.
+func checkForm(t *testing.T, c window, s *Source) {
+	t.Helper()
+	switch form := s.c.(type) {
+	case *sparse:
+		if c.list == 0 {
+			t.Errorf("all determinants are kept in a sparse form")
+		}
+	case *factored:
+		if form.rank != c.rank {
+			t.Errorf("rank %d found, expected %d", form.rank, c.rank)
+		}
+	case *dense:
+		if c.rank > 0 || c.list > 0 {
+			t.Errorf("a dense form, expected another")
+		}
+	}
+	if want := c.symmetric || (c.up == 0 && c.down == 0); s.symmetric != want && c.list != 1 {
+		t.Errorf("symmetric is %v", s.symmetric)
 	}
 }
 

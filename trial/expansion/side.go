@@ -176,7 +176,7 @@ func (s *Source) projectOnSupport(a *form, w trial.Walkers, spin int) {
 // largestTheta is the largest element of θ, |re|+|im|, that is accepted of the
 // preferred reference. It bounds the loss of digits; what it buys is that most
 // walkers of a tile have one reference.
-const largestTheta = 8
+const largestTheta = 16
 
 // pivot exchanges every column of S†φ with a row: those of the core and of the
 // preferred reference or, where that would be unstable, of the core and then of
