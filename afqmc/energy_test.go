@@ -91,7 +91,7 @@ func TestEnergies(t *testing.T) {
 		walkers       int
 	}{
 		{"H2_sto6g_R1.4", meanfield.RHF, -1.14594, 0.31, 1, false, 25, 400},
-		{"H4_chain_R1.8_sto6g", meanfield.RHF, -2.18781, 0.64, 1, true, 60, 400},
+		{"H4_chain_R1.8_sto6g", meanfield.RHF, -2.18781, 0.64, 1, true, 120, 400},
 		{"H6_ring_R1.8_sto6g", meanfield.RHF, -3.25680, 0.57, 1, true, 40, 400},
 		{"H6_ring_R2.8_sto6g", meanfield.RHF, -3.01432, 3.83, 2, true, 200, 800},
 		{"H6_ring_R2.8_sto6g", meanfield.UHF, -3.04586, 0.58, 1, false, 30, 400},
@@ -127,6 +127,52 @@ func TestEnergies(t *testing.T) {
 			}
 			if math.Abs(deviation) > allowed {
 				t.Errorf("deviation %+.2f mEh, allowed %.2f", deviation, allowed)
+			}
+		})
+	}
+}
+
+// TestAgainstFullCI: molecules and atoms of closed and open shell, energies
+// within 5 millihartree of full CI (string CI of an independent code over the
+// same integral files); N2 at 1.6 Å, beyond one determinant, is only reported.
+func TestAgainstFullCI(t *testing.T) {
+	for _, c := range []struct {
+		name    string
+		kind    meanfield.Kind
+		exact   float64
+		bound   float64 // millihartree; 0: report
+		walkers int
+		length  float64
+		long    bool
+	}{
+		{"LiH_1.6A_sto6g", meanfield.UHF, -7.972249851361, 5, 200, 20, false},
+		{"Be_ccpvdz", meanfield.UHF, -14.617409506554, 5, 400, 60, true},
+		{"H2O_sto3g_testgeom", meanfield.UHF, -75.012980198443, 5, 400, 60, true},
+		{"N_631g_quartet", meanfield.UHF, -54.419939662414, 5, 400, 40, true},
+		{"H5_chain_R1.8_sto6g_doublet", meanfield.UHF, -2.677036500885, 5, 400, 40, true},
+		{"N2_1.6A_sto6g", meanfield.UHF, -108.597095443637, 0, 400, 40, true},
+	} {
+		t.Run(c.name, func(t *testing.T) {
+			if testing.Short() {
+				t.Skip("statistical")
+			}
+			if c.long && os.Getenv("LEADLINE_LONG") == "" {
+				t.Skip("set LEADLINE_LONG=1 for the long rows")
+			}
+			guide, start := guided(t, load(t, c.name), c.kind)
+			r, err := afqmc.Run(context.Background(), guide, start, afqmc.Options{
+				TimeStep: 0.01, Walkers: c.walkers, Equilibration: 6, Length: c.length, Seed: 2, Cores: 2,
+			}, nil)
+			if err != nil {
+				t.Fatal(err)
+			}
+			deviation := 1e3 * (r.Energy.Mean - c.exact)
+			t.Logf("E = %.5f(%.2f mEh), full CI %.5f, deviation %+.2f mEh", r.Energy.Mean, 1e3*r.Energy.Error, c.exact, deviation)
+			for _, w := range r.Warnings {
+				t.Logf("%s %s: %s", w.Level, w.Check, w.Text)
+			}
+			if c.bound > 0 && math.Abs(deviation) > c.bound {
+				t.Errorf("deviation %+.2f mEh, expected at most %g", deviation, c.bound)
 			}
 		})
 	}

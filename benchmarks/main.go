@@ -172,6 +172,7 @@ func (r *report) walk() error {
 		func() { tenSteps(w) },
 		func() { tenSteps(two) },
 	}
+	stages = append(stages, smallInverses(n, tile))
 	for _, s := range stages {
 		work = append(work, s.Run)
 	}
@@ -192,6 +193,27 @@ func (r *report) walk() error {
 		r.Cores2 = t[1] / t[2]
 	}
 	return nil
+}
+
+// smallInverses inverts the overlap matrices of both spins of a tile.
+func smallInverses(n, walkers int) afqmc.Stage {
+	count := 2 * walkers
+	matrices := make([]float64, count*2*n*n)
+	for i, v := range matrix(n) {
+		for k := range 2 * count {
+			matrices[k*n*n+i] = v
+		}
+	}
+	work := make([]float64, len(matrices))
+	logs, phases := make([]float64, count), make([]complex128, count)
+	return afqmc.Stage{
+		Name:  "small inverses, part of the above",
+		Flops: float64(count) * 8 * math.Pow(float64(n), 3),
+		Run: func() {
+			copy(work, matrices)
+			linalg.InvertBatch(n, count, work, logs, phases)
+		},
+	}
 }
 
 // tenSteps does ten steps with local energies in the last one.

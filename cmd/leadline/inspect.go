@@ -2,22 +2,25 @@ package main
 
 import (
 	"bytes"
+	"compress/gzip"
 	"context"
 	"encoding/json"
 	"fmt"
 	"io"
+	"math"
 	"os"
 	"path/filepath"
 	"strings"
 
 	"github.com/spf13/cobra"
 
-	"leadline/cmd/leadline/job"
 	"leadline/hamiltonian"
 	"leadline/hamiltonian/fcidump"
 	"leadline/hamiltonian/meanfield"
+	"leadline/hamiltonian/molecule"
 	"leadline/hamiltonian/prepared"
 	"leadline/trial/expansion"
+	"leadline/trial/measured/record"
 )
 
 func inspectCommand(stderr io.Writer) *cobra.Command {
@@ -67,7 +70,9 @@ func inspect(ctx context.Context, name string, out io.Writer, shown display) err
 	case len(head) == 0:
 		return fmt.Errorf("%s: is empty", name)
 	case strings.HasSuffix(name, ".toml"):
-		return inspectJob(name, out)
+		return inspectJob(ctx, name, out, shown)
+	case isRecord(name, head):
+		return inspectRecord(name, out)
 	case bytes.HasPrefix(head, []byte{0x1f, 0x8b}), bytes.HasPrefix(bytes.TrimSpace(head), []byte("&")):
 		return inspectIntegrals(ctx, name, out, shown)
 	case bytes.HasPrefix(head, []byte("# expansion")):
@@ -75,7 +80,7 @@ func inspect(ctx context.Context, name string, out io.Writer, shown display) err
 	case bytes.HasPrefix(head, []byte("leadline prepared ")):
 		return inspectPrepared(ctx, name, out, shown)
 	}
-	return fmt.Errorf("%s: is none of: integral file, prepared hamiltonian, expansion, job file, directory of results", name)
+	return fmt.Errorf("%s: is none of: integral file, prepared hamiltonian, expansion, record, job file, directory of results", name)
 }
 
 func firstBytes(name string) ([]byte, error) {
@@ -112,7 +117,56 @@ func inspectIntegrals(ctx context.Context, name string, out io.Writer, shown dis
 	fmt.Fprintf(out, "%s: integral file\n", name)
 	fmt.Fprintf(out, "  %d orbitals, %d up and %d down electrons, constant energy %s E_h\n", h.Orbitals, h.Up, h.Down, quoted(h.Constant, 0))
 	fmt.Fprintf(out, "  %d factors, largest error on a diagonal integral %.1e E_h\n", h.Factors.Count(), residual)
-	return inspectMeanField(ctx, h, out)
+	return inspectMeanField(ctx, h, nil, out)
+}
+
+// isRecord recognises a measurement record: packed, text, or text in gzip.
+func isRecord(name string, head []byte) bool {
+	text := bytes.TrimSpace(head)
+	if bytes.HasPrefix(head, []byte{0x1f, 0x8b}) {
+		file, err := os.Open(name)
+		if err != nil {
+			return false
+		}
+		defer file.Close()
+		plain, err := gzip.NewReader(file)
+		if err != nil {
+			return false
+		}
+		begin := make([]byte, 64)
+		n, _ := io.ReadFull(plain, begin)
+		text = bytes.TrimSpace(begin[:n])
+	}
+	return bytes.HasPrefix(head, []byte("OVSHOT1\n")) || bytes.HasPrefix(text, []byte("{"))
+}
+
+// inspectRecord reads a whole record, so that anything wrong with it is found.
+func inspectRecord(name string, out io.Writer) error {
+	r, err := openRecord(name)
+	if err != nil {
+		return err
+	}
+	defer r.close()
+	stream, err := r.source()
+	if err != nil {
+		return err
+	}
+	h := stream.Header()
+	var settings, shots int64
+	var s record.Setting
+	for err = stream.Next(&s); err == nil; err = stream.Next(&s) {
+		settings++
+		for _, o := range s.Shots {
+			shots += int64(o.Count)
+		}
+	}
+	if err != io.EOF {
+		return err
+	}
+	fmt.Fprintf(out, "%s: %s record, %d qubits, ensemble %s\n", name, h.Kind, h.Qubits, h.Ensemble)
+	fmt.Fprintf(out, "  %d up and %d down electrons; %d settings, %d shots\n", h.Up, h.Down, settings, shots)
+	fmt.Fprintf(out, "  orbitals of the file with fingerprint %s\n  state: %s\n", h.HamiltonianSHA256, h.Trial)
+	return nil
 }
 
 // inspectPrepared reads a prepared Hamiltonian and solves its mean fields.
@@ -135,7 +189,7 @@ func inspectPrepared(ctx context.Context, name string, out io.Writer, shown disp
 	if !h.SpinFree() {
 		return nil // restricted mean fields need factors that act alike on both spins
 	}
-	return inspectMeanField(ctx, h, out)
+	return inspectMeanField(ctx, h, nil, out)
 }
 
 // inspectExpansion reads an expansion and describes it.
@@ -167,14 +221,19 @@ func inspectExpansion(name string, out io.Writer) error {
 	return nil
 }
 
-// inspectMeanField prints energies, spin and orbital energies of the mean fields.
-func inspectMeanField(ctx context.Context, h *hamiltonian.Hamiltonian, out io.Writer) error {
+// inspectMeanField prints energies, spin and orbital energies of the mean fields
+// and, of a molecule, the dipole moment.
+func inspectMeanField(ctx context.Context, h *hamiltonian.Hamiltonian, m *molecule.Result, out io.Writer) error {
+	options := meanfield.Options{}
+	if m != nil {
+		options.Guess = m.Density
+	}
 	kinds := []meanfield.Kind{meanfield.RHF, meanfield.UHF}
 	if h.Up != h.Down {
 		kinds[0] = meanfield.ROHF
 	}
 	for _, kind := range kinds {
-		s, err := meanfield.Solve(ctx, h, kind, meanfield.Options{})
+		s, err := meanfield.Solve(ctx, h, kind, options)
 		if err != nil {
 			return fmt.Errorf("%v: %w", kind, err)
 		}
@@ -182,9 +241,39 @@ func inspectMeanField(ctx context.Context, h *hamiltonian.Hamiltonian, out io.Wr
 		for _, note := range s.Notes {
 			fmt.Fprintf(out, "    note: %s\n", note)
 		}
+		if m != nil {
+			d := dipole(m, s)
+			size := math.Sqrt(d[0]*d[0] + d[1]*d[1] + d[2]*d[2])
+			fmt.Fprintf(out, "    dipole moment (%s, %s, %s) e·bohr about the origin, %.4f debye\n", fixed(d[0]), fixed(d[1]), fixed(d[2]), size*debye)
+		}
 		printOrbitalEnergies(out, s)
 	}
 	return nil
+}
+
+// fixed writes a number with five decimals and no negative zero.
+func fixed(v float64) string {
+	return minus(fmt.Sprintf("%.5f", math.Round(v*1e5)/1e5+0))
+}
+
+// debye is e·bohr in debye: CODATA 2018 (Tiesinga et al., Rev. Mod. Phys. 93,
+// 025010 (2021)).
+const debye = 2.541746473
+
+// dipole returns the dipole moment of a mean field in e·bohr.
+func dipole(m *molecule.Result, s *meanfield.Solution) [3]float64 {
+	d := m.NuclearDipole
+	for spin := range 2 {
+		density := s.Density(spin)
+		for k := range d {
+			for p := range density.SymmetricDim() {
+				for q := range density.SymmetricDim() {
+					d[k] -= density.At(p, q) * m.Position[k].At(p, q)
+				}
+			}
+		}
+	}
+	return d
 }
 
 func printOrbitalEnergies(out io.Writer, s *meanfield.Solution) {
@@ -214,19 +303,28 @@ func printOrbitalEnergies(out io.Writer, s *meanfield.Solution) {
 	}
 }
 
-// inspectJob checks a job file and prints the job as resolved.
-func inspectJob(name string, out io.Writer) error {
-	in := &inputs{dir: filepath.Dir(name), hashes: map[string]string{}}
-	text, err := in.read(filepath.Base(name))
-	if err != nil {
-		return err
-	}
-	j, err := job.Parse(text, name)
+// inspectJob checks a job file and prints the job as resolved; of a molecule also
+// its mean fields, all electrons included.
+func inspectJob(ctx context.Context, name string, out io.Writer, shown display) error {
+	in, j, _, err := loadJob(name)
 	if err != nil {
 		return err
 	}
 	fmt.Fprintf(out, "%s: job, as resolved\n\n", name)
-	return j.Write(out)
+	if err := j.Write(out); err != nil || j.Hamiltonian.Source != "molecule" {
+		return err
+	}
+	s := &system{}
+	if err := s.fromMolecule(ctx, j, in, shown.stage); err != nil {
+		return err
+	}
+	h := s.hamiltonian
+	fmt.Fprintf(out, "\nmolecule: %d orbitals, %d up and %d down electrons, nuclear repulsion %s E_h\n", h.Orbitals, h.Up, h.Down, quoted(h.Constant, 0))
+	fmt.Fprintf(out, "  %d factors, largest error on a diagonal integral %.1e E_h\n", h.Factors.Count(), s.residual)
+	for _, w := range s.warnings {
+		fmt.Fprintf(out, "  %-8s %s: %s\n", w.Level, w.Check, w.Text)
+	}
+	return inspectMeanField(ctx, h, s.molecule, out)
 }
 
 // inspectResults prints the summary of a directory of results.

@@ -19,10 +19,15 @@ func TestScripts(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
+	examples, err := filepath.Abs("example")
+	if err != nil {
+		t.Fatal(err)
+	}
 	testscript.Run(t, testscript.Params{
 		Dir: filepath.Join("testdata", "script"),
 		Setup: func(env *testscript.Env) error {
 			env.Setenv("INTEGRALS", integrals)
+			env.Setenv("EXAMPLES", examples)
 			return nil
 		},
 		RequireExplicitExec: true,
