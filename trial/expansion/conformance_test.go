@@ -259,10 +259,15 @@ func checkForm(t *testing.T, c window, s *Source) {
 // forms lists every way to compute a local energy that an expansion has.
 func forms(s *Source, h *hamiltonian.Hamiltonian) map[string]trial.Energies {
 	r := trial.NewRotated(h, s.Support())
+	small := s.newCumulant(h, r, 1<<40)
+	if d, ok := small.doubles.(*denseDoubles); ok {
+		d.unit, d.numbers = 3, 0
+	}
 	return map[string]trial.Energies{
-		"all memory": s.Energies(h, r, 1<<40),
-		"no memory":  s.Energies(h, r, 0),
-		"table":      s.newCumulant(h, r, 1<<40),
+		"all memory":   s.Energies(h, r, 1<<40),
+		"no memory":    s.Energies(h, r, 0),
+		"table":        s.newCumulant(h, r, 1<<40),
+		"small blocks": small,
 	}
 }
 

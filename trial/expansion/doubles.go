@@ -32,7 +32,7 @@ type doublesArea struct {
 func (s *Source) newDoubles() doubles {
 	switch c := s.c.(type) {
 	case *dense:
-		d := &denseDoubles{s: s, c: c, down: s.newExciter(hamiltonian.Down, c.rows, c.strings[hamiltonian.Up], c.planes)}
+		d := &denseDoubles{s: s, c: c, unit: blockUnit, numbers: halfMemory, down: s.newExciter(hamiltonian.Down, c.rows, c.strings[hamiltonian.Up], c.planes)}
 		if d.moves = d.down.moves; s.spaces[0] != s.spaces[1] {
 			d.moves = newMoves(s.active, s.spaces[0].electrons)
 		}
@@ -212,10 +212,12 @@ type denseDoubles struct {
 	c     *dense
 	down  *exciter
 	moves []moves // of the up strings
+	// A block of up strings is a multiple of unit wide, and so that the
+	// intermediate has about so many numbers.
+	unit, numbers int
 }
 
-// A block of up strings is a multiple of blockUnit wide, three vectors of the
-// product kernel, and about so that the intermediate has halfMemory numbers.
+// blockUnit is three vectors of the product kernel.
 const (
 	blockUnit  = 24
 	halfMemory = 1 << 19
@@ -227,7 +229,7 @@ func (d *denseDoubles) mixed(dst []complex128, a *doublesArea, up, down *form, c
 	xUp, xDown := s.spaces[0].excitations(), s.spaces[1].excitations()
 	a.result = trial.Grow(a.result, count*4*xUp*xDown)
 	d.down.start(side, down, count)
-	step := max(1, halfMemory/(2*xDown*count*blockUnit)) * blockUnit
+	step := max(1, d.numbers/(2*xDown*count*d.unit)) * d.unit
 	for from := 0; from < nUp; from += step {
 		to := min(nUp, from+step)
 		width := to - from

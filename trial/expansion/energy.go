@@ -50,12 +50,6 @@ func (s *Source) newCumulant(h *hamiltonian.Hamiltonian, r *trial.Rotated, memor
 	return e
 }
 
-// exchanger computes X_σ of a batch from its densities: rows 2i and 2i+1 of
-// density, of the given length, hold the block of this spin at offset block.
-type exchanger interface {
-	exchange(dst []complex128, a *energyArea, density []float64, length, block, count int)
-}
-
 type energies struct {
 	s        *Source
 	h        *hamiltonian.Hamiltonian

@@ -1,7 +1,6 @@
 package expansion
 
 import (
-	"cmp"
 	"fmt"
 	"math"
 	"slices"
@@ -39,11 +38,6 @@ type area struct {
 	planes []float64
 	total  [2][]complex128
 }
-
-// sparseRatio is how many times faster the dense products, with all that follows
-// from them in a local energy, do an element of C than the sparse ones: found by
-// measurement.
-const sparseRatio = 5
 
 // New returns the source of a valid expansion, which is not kept but for its
 // Columns. Errors: the expansion is not valid, its orbitals are not orthonormal
@@ -122,125 +116,6 @@ func checkOrthonormal(columns *mat.Dense) error {
 		}
 	}
 	return nil
-}
-
-// setCoefficients chooses the strings and the form of C: all strings and the
-// whole matrix, or only those that occur and their nonzero elements.
-func (s *Source) setCoefficients() {
-	e := s.expansion
-	largest := e.largest()
-	s.scale = math.Log(largest)
-	list := slices.DeleteFunc(slices.Clone(e.Determinants), func(d Determinant) bool { return d.Amplitude == 0 })
-	isComplex := slices.ContainsFunc(list, func(d Determinant) bool { return imag(d.Amplitude) != 0 })
-
-	var masks [2][]uint64
-	if e.Up == e.Down {
-		masks[0] = occurring(list, func(d Determinant) [2]uint64 { return [2]uint64{d.Up, d.Down} })
-		masks[1] = masks[0]
-	} else {
-		masks[0] = occurring(list, func(d Determinant) [2]uint64 { return [2]uint64{d.Up, d.Up} })
-		masks[1] = occurring(list, func(d Determinant) [2]uint64 { return [2]uint64{d.Down, d.Down} })
-	}
-	whole := [2][]uint64{allStrings(e.Active, e.Up), allStrings(e.Active, e.Down)}
-	full := float64(len(whole[0])) * float64(len(whole[1]))
-	useSparse := sparseRatio*float64(len(list)) < full
-	if !useSparse {
-		masks = whole
-	}
-	s.spaces[0] = newSpace(e.Active, e.Up, masks[0])
-	s.spaces[1] = s.spaces[0]
-	if e.Up != e.Down {
-		s.spaces[1] = newSpace(e.Active, e.Down, masks[1])
-	}
-
-	elements := make([]element, len(list))
-	var number [2]map[uint64]int32
-	for spin := range 2 {
-		number[spin] = make(map[uint64]int32, len(masks[spin]))
-		for k, mask := range masks[spin] {
-			number[spin][mask] = int32(k)
-		}
-	}
-	for k, d := range list {
-		elements[k] = element{
-			at:    [2]int32{number[0][d.Up], number[1][d.Down]},
-			value: complex(real(d.Amplitude)/largest, imag(d.Amplitude)/largest),
-		}
-	}
-	slices.SortFunc(elements, func(a, b element) int {
-		return cmp.Or(cmp.Compare(a.at[0], b.at[0]), cmp.Compare(a.at[1], b.at[1]))
-	})
-	leading := slices.MaxFunc(list, func(a, b Determinant) int { return cmp.Compare(magnitude(a), magnitude(b)) })
-	s.preferred = [2]uint64{leading.Up, leading.Down}
-	s.symmetric = e.Up == e.Down && isSymmetric(elements)
-	up, down := len(masks[0]), len(masks[1])
-	if useSparse {
-		s.c = newSparse(up, down, elements, isComplex)
-		return
-	}
-	re := make([]float64, up*down)
-	var im []float64
-	if isComplex {
-		im = make([]float64, up*down)
-	}
-	for _, v := range elements {
-		k := int(v.at[0])*down + int(v.at[1])
-		re[k] = real(v.value)
-		if isComplex {
-			im[k] = imag(v.value)
-		}
-	}
-	if c := newFactored(up, down, re, im); c != nil {
-		s.c = c
-		return
-	}
-	s.c = newDense(up, down, re, im)
-}
-
-// occurring returns the distinct strings of a list, ascending.
-func occurring(list []Determinant, of func(Determinant) [2]uint64) []uint64 {
-	var masks []uint64
-	for _, d := range list {
-		pair := of(d)
-		masks = append(masks, pair[0], pair[1])
-	}
-	slices.Sort(masks)
-	return slices.Compact(masks)
-}
-
-// symmetry is the largest deviation, relative to the largest amplitude, from
-// equal amplitudes of determinants with up and down exchanged that counts as
-// none: what a solver leaves by rounding.
-const symmetry = 1e-14
-
-// isSymmetric reports whether the sorted elements of a square C have C = Cᵀ, and
-// then makes them so exactly.
-func isSymmetric(elements []element) bool {
-	find := func(at [2]int32) int {
-		k, ok := slices.BinarySearchFunc(elements, at, func(e element, at [2]int32) int {
-			return cmp.Or(cmp.Compare(e.at[0], at[0]), cmp.Compare(e.at[1], at[1]))
-		})
-		if !ok {
-			return -1
-		}
-		return k
-	}
-	for _, e := range elements {
-		k := find([2]int32{e.at[1], e.at[0]})
-		if k < 0 {
-			return false
-		}
-		d := e.value - elements[k].value
-		if math.Hypot(real(d), imag(d)) > symmetry {
-			return false
-		}
-	}
-	for k, e := range elements {
-		if e.at[0] < e.at[1] {
-			elements[find([2]int32{e.at[1], e.at[0]})].value = elements[k].value
-		}
-	}
-	return true
 }
 
 // Sector implements [trial.Source].
