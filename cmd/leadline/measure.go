@@ -255,7 +255,7 @@ func checkRecord(ctx context.Context, name, jobName string, asJSON bool, stdout,
 	defer r.close()
 	report, estimate, err := checkReport(ctx, r, shown)
 	if code := record.CodeOf(err); code != "" {
-		fmt.Fprintln(stderr, strings.TrimPrefix(err.Error(), "leadline: "))
+		fmt.Fprintln(stderr, err) // begins with its code
 		return exitError{exitFailed}
 	}
 	if err != nil {

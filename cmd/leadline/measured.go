@@ -116,6 +116,13 @@ func (m *measuredTrial) expansion(e *expansion.Expansion) *expansion.Expansion {
 // bases is not sampled well.
 const fewSettings = 100
 
+// Above these a result of a measured trial needs a warning: noise over norm² of
+// its amplitudes, weight of walkers below three standard errors.
+const (
+	mostlyNoise = 0.3
+	unreliable  = 0.01
+)
+
 func (m *measuredTrial) warnings() (out []afqmc.Warning) {
 	if m.settings < fewSettings {
 		out = append(out, afqmc.Warning{Check: "record_settings", Level: afqmc.Caution, Figure: float64(m.settings),
@@ -126,18 +133,20 @@ func (m *measuredTrial) warnings() (out []afqmc.Warning) {
 	for _, c := range m.estimate.Mean() {
 		norm += real(c)*real(c) + imag(c)*imag(c)
 	}
-	if x := noise / math.Max(norm-noise, 1e-300); x > 0.3 {
+	if x := noise / math.Max(norm-noise, 1e-300); x > mostlyNoise {
 		out = append(out, afqmc.Warning{Check: "record_noise", Level: afqmc.Stop, Figure: x,
-			Text: fmt.Sprintf("shot noise carries %.2g times the weight of the measured state, at most 0.3 is usable; take more shots or project (real, spin)", x)})
+			Text: fmt.Sprintf("shot noise carries %.2g times the weight of the measured state, at most %g is usable; take more shots or project (real, spin)", x, mostlyNoise)})
 	}
 	return out
 }
 
-// walkerSNR says how well the measured trial knows the walkers' overlaps.
+// walkerSNR says how well the measured trial knows the walkers' overlaps and, as
+// the median of its standard error in hartree, their local energies.
 type walkerSNR struct {
-	Mean   float64 `json:"mean"`
-	P01    float64 `json:"p01"`
-	Below3 float64 `json:"below3"`
+	Mean        float64  `json:"mean"`
+	P01         float64  `json:"p01"`
+	Below3      float64  `json:"below3"`
+	LocalEnergy *float64 `json:"local_energy_error"`
 }
 
 // noiseWatch collects signal-to-noise ratios and a few sets of walkers along a run.
@@ -148,18 +157,13 @@ type noiseWatch struct {
 	ratios []float64
 	batch  []float64
 	weight []float64
-	kept   []ensemble
+	kept   []measured.Population
 }
 
-type ensemble struct {
-	walkers trial.Walkers
-	weight  []float64
-}
-
-const keptEnsembles = 6
+const keptPopulations = 6
 
 func (m *measuredTrial) watch(rows int) *noiseWatch {
-	return &noiseWatch{signal: measured.NewSignal(m.estimate, m.core), every: max(1, rows/keptEnsembles)}
+	return &noiseWatch{signal: measured.NewSignal(m.estimate, m.core), every: max(1, rows/keptPopulations)}
 }
 
 func (n *noiseWatch) observe(w *afqmc.Walk) {
@@ -172,10 +176,10 @@ func (n *noiseWatch) observe(w *afqmc.Walk) {
 			n.weight = append(n.weight, w.State.Weight[i])
 		}
 	}
-	if n.seen%n.every == n.every/2 && len(n.kept) < keptEnsembles {
+	if n.seen%n.every == n.every/2 && len(n.kept) < keptPopulations {
 		copied := walkers
 		copied.Data = slices.Clone(walkers.Data)
-		n.kept = append(n.kept, ensemble{copied, slices.Clone(w.State.Weight)})
+		n.kept = append(n.kept, measured.Population{Walkers: copied, Weights: slices.Clone(w.State.Weight)})
 	}
 	n.seen++
 }
@@ -199,49 +203,6 @@ func (n *noiseWatch) snr() *walkerSNR {
 	return out
 }
 
-// energyError returns the standard error of the mixed energy from the record's
-// jackknife: the energies of the kept walkers with every batch left out in turn.
-// The walkers themselves are those of the full record.
-func (m *measuredTrial) energyError(ctx context.Context, n *noiseWatch, h *hamiltonian.Hamiltonian) (float64, error) {
-	batches := len(m.estimate.Batches)
-	if batches < 2 || len(n.kept) == 0 {
-		return math.NaN(), nil
-	}
-	figure := amplitude.Jackknife(batches, func(without int) float64 {
-		if ctx.Err() != nil {
-			return 0
-		}
-		e := m.estimate
-		if without >= 0 {
-			e = e.Clone()
-			e.Batches = slices.Delete(slices.Clone(e.Batches), without, without+1)
-			e.Weights = slices.Delete(slices.Clone(e.Weights), without, without+1)
-		}
-		source, err := expansion.New(m.expansion(measured.Expansion(e, m.orbitals, m.core)))
-		if err != nil {
-			return math.NaN()
-		}
-		guide, err := trial.NewGuide(h, source, afqmc.ExchangeMemory)
-		if err != nil {
-			return math.NaN()
-		}
-		var numerator, denominator float64
-		for _, k := range n.kept {
-			mixed := guide.NewMixed(k.walkers.Count)
-			guide.Evaluate(mixed, k.walkers)
-			guide.LocalEnergies(mixed, k.walkers)
-			for i, w := range k.weight {
-				if w > 0 && !mixed.Overlap[i].Zero() {
-					numerator += w * real(mixed.Energy[i])
-					denominator += w
-				}
-			}
-		}
-		return numerator / denominator
-	})
-	return figure.Error, ctx.Err()
-}
-
 // halfRecords is what a run with either half of the record gives.
 type halfRecords struct {
 	energies   [2]float64
@@ -260,7 +221,11 @@ func (m *measuredTrial) halves(ctx context.Context, r *jobRun) (*halfRecords, er
 		if err != nil {
 			return nil, fmt.Errorf("half record: %w", err)
 		}
-		guide, err := trial.NewGuide(r.system.hamiltonian, source, afqmc.ExchangeMemory)
+		bind := trial.NewGuide
+		if r.options.Single {
+			bind = trial.NewSingleGuide
+		}
+		guide, err := bind(r.system.hamiltonian, source, afqmc.ExchangeMemory)
 		if err != nil {
 			return nil, err
 		}
@@ -308,19 +273,36 @@ func (k *rowKeeper) Record(r afqmc.Row) error {
 	return nil
 }
 
-// report adds to a summary what shot noise does to the energy.
+// report adds to a summary what shot noise does to the energy. Interrupted on its
+// way it leaves out what is not known yet and says so.
 func (m *measuredTrial) report(ctx context.Context, r *jobRun, n *noiseWatch) error {
-	out := r.summary
-	out.WalkerSNR = n.snr()
-	if out.WalkerSNR != nil && out.WalkerSNR.Below3 > 0.01 {
+	err := m.noise(ctx, r, n)
+	if err != nil && ctx.Err() != nil {
+		r.summary.Status = afqmc.StatusInterrupted
+		r.summary.Warnings = append(r.summary.Warnings, afqmc.Warning{Check: "record_halves", Level: afqmc.Caution,
+			Text: "interrupted after the walk: its energy is complete, the effect of shot noise is not known in full"})
+		return nil
+	}
+	return err
+}
+
+func (m *measuredTrial) noise(ctx context.Context, r *jobRun, n *noiseWatch) error {
+	out, h := r.summary, r.system.hamiltonian
+	if out.WalkerSNR = n.snr(); out.WalkerSNR == nil {
+		return nil
+	}
+	if out.WalkerSNR.Below3 > unreliable {
 		out.Warnings = append(out.Warnings, afqmc.Warning{Check: "walker_signal", Level: afqmc.Caution, Figure: out.WalkerSNR.Below3,
 			Text: fmt.Sprintf("%.2g of the weight sits on walkers whose overlap is below three standard errors of the record: their phases are unreliable", out.WalkerSNR.Below3)})
 	}
-	spread, err := m.energyError(ctx, n, r.system.hamiltonian)
+	place := func(e *amplitude.Estimate) *expansion.Expansion {
+		return m.expansion(measured.Expansion(e, m.orbitals, m.core))
+	}
+	errors, err := measured.Energies(ctx, h, m.estimate, place, n.kept, afqmc.ExchangeMemory)
 	if err != nil {
 		return err
 	}
-	out.MeasurementError = number(spread)
+	out.MeasurementError, out.WalkerSNR.LocalEnergy = number(errors.Mixed), number(errors.Local)
 	halves, err := m.halves(ctx, r)
 	if err != nil {
 		return err

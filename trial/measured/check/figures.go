@@ -92,6 +92,10 @@ func (r *Report) rejections(h *record.Header, e *amplitude.Estimate) {
 		f.Cause, f.Expected = causeCoset, 1-clifford.Reached(h.Qubits, weight)
 	}
 	f.Error = math.Sqrt(math.Max(f.Fraction, 1/float64(r.Shots)) / float64(r.Shots))
+	if h.Ensemble.Clifford() {
+		// All shots of a setting may miss together.
+		f.Error = math.Sqrt(f.Fraction * (1 - f.Fraction) / float64(r.Settings))
+	}
 	r.Rejected = []Rejected{f}
 }
 

@@ -67,7 +67,7 @@ func Open(name string, r io.ReaderAt, size int64) (*Reader, error) {
 	if err != nil {
 		return nil, err
 	}
-	tail := make([]byte, min(size, 512))
+	tail := make([]byte, min(size, tailBytes))
 	if _, err := r.ReadAt(tail, size-int64(len(tail))); err != nil && err != io.EOF {
 		return nil, err
 	}
