@@ -336,6 +336,3 @@ func readBasis(j *job.Job, in *inputs) (*basis.Set, error) {
 	defer file.Close()
 	return basis.Read(file, in.path(j.Hamiltonian.BasisFile))
 }
-
-// noProgress shows nothing.
-func noProgress(string, int64) func(int64) { return func(int64) {} }

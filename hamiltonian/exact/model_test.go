@@ -1,7 +1,6 @@
 package exact
 
 import (
-	"fmt"
 	"math"
 	"testing"
 
@@ -198,7 +197,7 @@ func BenchmarkSolve12in12(b *testing.B) {
 	for b.Loop() {
 		result := solve(b, h, Options{})
 		if got := result.States[0].Energy; math.Abs(got+6.920353562419) > 1e-8 {
-			b.Fatal(fmt.Sprintf("energy %.12f", got))
+			b.Fatalf("energy %.12f", got)
 		}
 		b.ReportMetric(float64(result.Iterations), "iterations")
 	}

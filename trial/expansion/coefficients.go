@@ -186,6 +186,19 @@ func newDense(up, down int, re, im []float64) *dense {
 	return c
 }
 
+// triangle returns the elements of a symmetric C at and beyond the diagonal, which
+// is halved, laid out as rows; the others are zero.
+func (c *dense) triangle() []float64 {
+	n := c.strings[0]
+	out := make([]float64, len(c.rows))
+	for row := range c.planes * n {
+		from := row % n
+		copy(out[row*n+from:(row+1)*n], c.rows[row*n+from:])
+		out[row*n+from] *= 0.5
+	}
+	return out
+}
+
 func (c *dense) contract(y, d []float64, count, spin int, scratch *[]float64) {
 	n, other := c.strings[spin], c.strings[1-spin]
 	if c.planes == 1 {

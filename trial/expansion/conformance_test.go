@@ -287,7 +287,11 @@ func TestFormsAgree(t *testing.T) {
 				if err != nil {
 					t.Fatal(err)
 				}
-				for batch, w := range []trial.Walkers{trialtest.RandomWalkers(s.Sector(), false, 5, 8), specialWalkers(e, 9)} {
+				batches := []trial.Walkers{trialtest.RandomWalkers(s.Sector(), false, 5, 8), specialWalkers(e, 9)}
+				if e.Up == e.Down {
+					batches = append(batches, trialtest.RandomWalkers(s.Sector(), true, 5, 10))
+				}
+				for batch, w := range batches {
 					m := g.NewMixed(w.Count)
 					g.Evaluate(m, w)
 					energies.LocalEnergies(m, w)

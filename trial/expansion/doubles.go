@@ -33,6 +33,9 @@ func (s *Source) newDoubles() doubles {
 	switch c := s.c.(type) {
 	case *dense:
 		d := &denseDoubles{s: s, c: c, unit: blockUnit, numbers: halfMemory, down: s.newExciter(hamiltonian.Down, c.rows, c.strings[hamiltonian.Up], c.planes)}
+		if s.symmetric {
+			d.down.triangle = c.triangle()
+		}
 		if d.moves = d.down.moves; s.spaces[0] != s.spaces[1] {
 			d.moves = newMoves(s.active, s.spaces[0].electrons)
 		}
@@ -90,6 +93,9 @@ type exciter struct {
 	rows   []float64 // strings × columns, plane after plane
 	planes int
 	width  int // columns
+	// triangle, where not nil, holds half of a symmetric matrix: the columns at
+	// and beyond the row, the diagonal halved.
+	triangle []float64
 }
 
 // excitedSide is the scratch of an exciter.
@@ -160,21 +166,27 @@ func (e *exciter) start(a *excitedSide, form *form, count int) {
 func (s *space) single() int { return strings.Count(s.active-2, s.electrons-1) }
 
 // apply sets a.half for the columns from ≤ I < to of the matrix.
-func (e *exciter) apply(a *excitedSide, from, to int) {
+// With a triangle in place of rows, which vanishes for columns below the row, only
+// the rows below to are looked at.
+func (e *exciter) apply(a *excitedSide, rows []float64, from, to int) {
 	a.half = trial.Grow(a.half, e.space.excitations()*len(a.order)*2*(to-from))
 	for b := range e.space.active {
 		for j := range e.space.active {
 			if b != j {
-				e.pair(a, b, j, from, to)
+				e.pair(a, rows, b, j, from, to)
 			}
 		}
 	}
 }
 
 // pair does the work of apply for one pair of orbitals.
-func (e *exciter) pair(a *excitedSide, b, j, from, to int) {
+func (e *exciter) pair(a *excitedSide, rows []float64, b, j, from, to int) {
 	width, x, ne, length := to-from, e.space.excitations(), e.space.electrons, e.space.single()
 	n, planes := len(e.space.masks), e.planes
+	used := length
+	if e.triangle != nil && &rows[0] == &e.triangle[0] {
+		used, _ = slices.BinarySearch(e.moves[b*e.space.active+j].to, int32(to))
+	}
 	gathered := false
 	for _, g := range a.groups {
 		if g.frame.reference>>j&1 == 0 || g.frame.reference>>b&1 == 1 {
@@ -182,10 +194,10 @@ func (e *exciter) pair(a *excitedSide, b, j, from, to int) {
 		}
 		if !gathered {
 			gathered = true
-			a.gathered = trial.Grow(a.gathered, length*planes*width)
-			for l, row := range e.moves[b*e.space.active+j].to {
+			a.gathered = trial.Grow(a.gathered, used*planes*width)
+			for l, row := range e.moves[b*e.space.active+j].to[:used] {
 				for plane := range planes {
-					copy(a.gathered[(l*planes+plane)*width:][:width], e.rows[(plane*n+int(row))*e.width+from:])
+					copy(a.gathered[(l*planes+plane)*width:][:width], rows[(plane*n+int(row))*e.width+from:])
 				}
 			}
 		}
@@ -194,11 +206,11 @@ func (e *exciter) pair(a *excitedSide, b, j, from, to int) {
 		left := a.excited[(g.from*x+excitation*members)*2*length:]
 		half := a.half[(excitation*len(a.order)+g.from)*2*width:]
 		if planes == 1 {
-			linalg.Gemm(false, false, 2*members, width, length, 1, left, length, a.gathered, width, 0, half, width)
+			linalg.Gemm(false, false, 2*members, width, used, 1, left, length, a.gathered, width, 0, half, width)
 			continue
 		}
 		a.products = trial.Grow(a.products, 4*members*width)
-		linalg.Gemm(false, false, 2*members, 2*width, length, 1, left, length, a.gathered, 2*width, 0, a.products, 2*width)
+		linalg.Gemm(false, false, 2*members, 2*width, used, 1, left, length, a.gathered, 2*width, 0, a.products, 2*width)
 		for k := range members {
 			combine(half[2*k*width:], half[(2*k+1)*width:], a.products[4*k*width:], 1, width)
 		}
@@ -229,11 +241,15 @@ func (d *denseDoubles) mixed(dst []complex128, a *doublesArea, up, down *form, c
 	xUp, xDown := s.spaces[0].excitations(), s.spaces[1].excitations()
 	a.result = trial.Grow(a.result, count*4*xUp*xDown)
 	d.down.start(side, down, count)
+	rows, triangular := d.down.rows, up == down && d.down.triangle != nil
+	if triangular {
+		rows = d.down.triangle
+	}
 	step := max(1, d.numbers/(2*xDown*count*d.unit)) * d.unit
 	for from := 0; from < nUp; from += step {
 		to := min(nUp, from+step)
 		width := to - from
-		d.down.apply(side, from, to)
+		d.down.apply(side, rows, from, to)
 		a.full = trial.Grow(a.full, 2*xUp*width)
 		beta := 1.0
 		if from == 0 {
@@ -253,8 +269,23 @@ func (d *denseDoubles) mixed(dst []complex128, a *doublesArea, up, down *form, c
 	}
 	for _, i := range side.order {
 		if up.frames[i] != nil {
-			combineComplex(dst[int(i)*xUp*xDown:], a.result[int(i)*4*xUp*xDown:], xDown, xUp)
+			out := dst[int(i)*xUp*xDown:][:xUp*xDown]
+			combineComplex(out, a.result[int(i)*4*xUp*xDown:], xDown, xUp)
+			if triangular {
+				addTranspose(out, xUp)
+			}
 		}
+	}
+}
+
+// addTranspose adds the transpose of an n×n matrix to it.
+func addTranspose(x []complex128, n int) {
+	for i := range n {
+		for j := range i {
+			x[i*n+j] += x[j*n+i]
+			x[j*n+i] = x[i*n+j]
+		}
+		x[i*n+i] *= 2
 	}
 }
 

@@ -17,7 +17,10 @@ type factors struct {
 
 // chunkWidth is about the number of columns of one chunk, so that its product
 // with a tile of walkers stays in the cache.
-const chunkWidth = 1024
+const (
+	chunkWidth = 1024
+	rowsAtOnce = 384
+)
 
 func newFactors(s *Source, h *hamiltonian.Hamiltonian, r *trial.Rotated, spin int) *factors {
 	m, ns := s.sector.Orbitals, s.supported()
@@ -62,17 +65,21 @@ func (f *factors) dress(dst []float64, a *energyArea, form *form, w trial.Walker
 		s.activeColumns(columns, a, form, w, i, spin)
 		s.leftVectors(left, form, i, spin)
 	}
-	for c, operand := range f.chunks {
-		_, width := operand.Dims()
-		count := width / ns
-		a.products = trial.Grow(a.products, 2*w.Count*ne*width)
-		operand.Mul(2*w.Count*ne, 1, a.columns, m, 0, a.products, width)
-		for i := range w.Count {
-			for hole := range ne {
-				// [Re λ, −Im λ; Im λ, Re λ]·[Re; Im], 2(no−ne)×2ns by 2ns×chunk
-				linalg.Gemm(false, false, 2*np, count, 2*ns, 1, a.left[4*i*np*ns:], 2*ns,
-					a.products[2*(i*ne+hole)*width:], count, 0,
-					dst[(i*rows+hole)*ng+c*f.chunk:], ne*ng)
+	step := max(1, rowsAtOnce/(2*ne))
+	for from := 0; from < w.Count; from += step {
+		to := min(w.Count, from+step)
+		for c, operand := range f.chunks {
+			_, width := operand.Dims()
+			count := width / ns
+			a.products = trial.Grow(a.products, 2*step*ne*width)
+			operand.Mul(2*(to-from)*ne, 1, a.columns[2*from*ne*m:], m, 0, a.products, width)
+			for i := from; i < to; i++ {
+				for hole := range ne {
+					// [Re λ, −Im λ; Im λ, Re λ]·[Re; Im], 2(no−ne)×2ns by 2ns×chunk
+					linalg.Gemm(false, false, 2*np, count, 2*ns, 1, a.left[4*i*np*ns:], 2*ns,
+						a.products[2*((i-from)*ne+hole)*width:], count, 0,
+						dst[(i*rows+hole)*ng+c*f.chunk:], ne*ng)
+				}
 			}
 		}
 	}

@@ -182,7 +182,7 @@ func (d *factoredDoubles) mixed(dst []complex128, a *doublesArea, up, down *form
 	for spin, form := range [2]*form{up, down} {
 		side := &a.sides[spin]
 		d.sides[spin].start(side, form, count)
-		d.sides[spin].apply(side, 0, d.sides[spin].width)
+		d.sides[spin].apply(side, d.sides[spin].rows, 0, d.sides[spin].width)
 		side.place = trial.Grow(side.place, count)
 		for k, i := range side.order {
 			side.place[i] = int32(k)
