@@ -359,7 +359,11 @@ func printReport(w io.Writer, name string, r *check.Report) error {
 	fmt.Fprintf(&b, "  determinants        %d\n", r.Determinants)
 	fmt.Fprintf(&b, "  kappa               %s (1 without noise)\n", quoted(r.Kappa, r.KappaError))
 	fmt.Fprintf(&b, "  effective shots     %.4g\n", r.EffectiveShots)
-	fmt.Fprintf(&b, "  variance per shot   %.4g, expected %s\n", r.Variance, quoted(r.VarianceExpected, r.VarianceExpectedError))
+	fmt.Fprintf(&b, "  variance per shot   %.4g, expected %s", r.Variance, quoted(r.VarianceExpected, r.VarianceExpectedError))
+	if r.Shots > r.Settings {
+		fmt.Fprintf(&b, " with one shot per setting, %.3g here", float64(r.Shots)/float64(r.Settings))
+	}
+	fmt.Fprintln(&b)
 	fmt.Fprintf(&b, "  infidelity          %.3g, before any projection\n", r.Infidelity)
 	for _, x := range r.Rejected {
 		fmt.Fprintf(&b, "  no contribution     %s of the shots (%s), noiseless %.4g\n", quoted(x.Fraction, x.Error), x.Cause, x.Expected)

@@ -50,9 +50,12 @@ func Estimate(source record.Source, batches int) (*Channel, error) {
 	if h.Kind != record.Calibration {
 		return nil, fmt.Errorf("record holds a %s, expected a calibration", h.Kind)
 	}
-	total, _ := st.Declared()
+	total, err := record.Total(st)
+	if err != nil {
+		return nil, err
+	}
 	if total < 2 {
-		return nil, fmt.Errorf("calibration record has %d settings, expected at least 2 in a file that ends with its totals", total)
+		return nil, fmt.Errorf("calibration record has %d settings, expected at least 2", total)
 	}
 	batches = min(batches, int(total))
 	size := len(Ideal(h.Ensemble, h.Qubits))

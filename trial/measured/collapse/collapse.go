@@ -34,9 +34,9 @@ func Run(ctx context.Context, source record.Source, opt Options) (*amplitude.Est
 	if batches == 0 {
 		batches = defaultBatches
 	}
-	total, _ := st.Declared()
-	if total < 0 {
-		return nil, fmt.Errorf("record does not tell its number of settings before it is read: open it as a file")
+	total, err := record.Total(st)
+	if err != nil {
+		return nil, err
 	}
 	if total == 0 {
 		return nil, fmt.Errorf("record has no settings")
@@ -98,9 +98,12 @@ func Masks(ctx context.Context, source record.Source, masks []uint64, opt Option
 	if err != nil {
 		return nil, err
 	}
-	total, _ := st.Declared()
+	total, err := record.Total(st)
+	if err != nil {
+		return nil, err
+	}
 	if total < 1 {
-		return nil, fmt.Errorf("record has %d settings", total)
+		return nil, fmt.Errorf("record has no settings")
 	}
 	res, err := p.average(ctx, st, 1, total, opt.Progress)
 	if err != nil {

@@ -1,6 +1,9 @@
 package record
 
-import "io"
+import (
+	"errors"
+	"io"
+)
 
 // Stream is a record that is being read: a Reader, or a Memory. Next fills in
 // one setting, or returns io.EOF after the last; see Reader.
@@ -17,6 +20,23 @@ type Stream interface {
 // Source opens a record from its beginning. Some estimates read it more than
 // once.
 type Source func() (Stream, error)
+
+// Total returns the number of settings that a stream, not read from yet, declares.
+// Where the end mark could not be found it reads on to the reason, with its place.
+func Total(s Stream) (int64, error) {
+	total, _ := s.Declared()
+	if total >= 0 {
+		return total, nil
+	}
+	var one Setting
+	for {
+		if err := s.Next(&one); err == io.EOF {
+			return 0, errors.New("record does not tell its number of settings before it is read: open it as a file")
+		} else if err != nil {
+			return 0, err
+		}
+	}
+}
 
 // At returns the source of a record at hand as a whole, such as a memory-mapped
 // file; see Open.

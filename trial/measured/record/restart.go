@@ -4,8 +4,8 @@ import "io"
 
 // Restarted is a Source for a record that can only be read from its beginning,
 // such as a compressed one: open starts again, once for each reading and once
-// more to look up the totals in the end mark, which the first readers of a file
-// need before the settings. Whatever open returns is the caller's to close.
+// more to look up the totals in the end mark. Whatever open returns is the
+// caller's to close.
 func Restarted(name string, open func() (io.Reader, error)) Source {
 	var tail end
 	return func() (Stream, error) {
