@@ -84,17 +84,22 @@ func readCollapsed(name string, batches int) *amplitude.Estimate {
 }
 
 func runCollapse(ctx context.Context, r *recordFile, o collapse.Options, progress progressFunc) (*amplitude.Estimate, error) {
+	return collapse.Run(ctx, r.source, onThisMachine(o, "collapsing "+filepath.Base(r.name), progress))
+}
+
+// onThisMachine fills in the memory at hand and a display of progress.
+func onThisMachine(o collapse.Options, stage string, progress progressFunc) collapse.Options {
 	if available := availableMemory(); available > 0 {
 		o.MemoryLimit = float64(available)
 	}
 	var tell func(int64)
 	o.Progress = func(done, total int64) {
 		if tell == nil {
-			tell = progress("collapsing "+filepath.Base(r.name), total)
+			tell = progress(stage, total)
 		}
 		tell(done)
 	}
-	return collapse.Run(ctx, r.source, o)
+	return o
 }
 
 // projections are the opt-in changes of collapsed amplitudes.

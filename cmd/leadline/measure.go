@@ -253,7 +253,7 @@ func checkRecord(ctx context.Context, name, jobName string, asJSON bool, stdout,
 		return err
 	}
 	defer r.close()
-	report, estimate, err := checkReport(ctx, r, shown)
+	report, estimate, err := check.Run(ctx, r.source, onThisMachine(collapse.Options{}, "reading "+filepath.Base(name), shown.stage))
 	if code := record.CodeOf(err); code != "" {
 		fmt.Fprintln(stderr, err) // begins with its code
 		return exitError{exitFailed}
@@ -277,16 +277,6 @@ func checkRecord(ctx context.Context, name, jobName string, asJSON bool, stdout,
 	return err
 }
 
-func checkReport(ctx context.Context, r *recordFile, shown display) (*check.Report, *amplitude.Estimate, error) {
-	var tell func(int64)
-	return check.Run(ctx, r.source, collapse.Options{Progress: func(done, total int64) {
-		if tell == nil {
-			tell = shown.stage("reading "+filepath.Base(r.name), total)
-		}
-		tell(done)
-	}})
-}
-
 // compareJob compares fingerprint and energy of the record with a job.
 func compareJob(ctx context.Context, r *recordFile, jobName string, report *check.Report, estimate *amplitude.Estimate, shown display) error {
 	in, j, _, err := loadJob(jobName)
@@ -308,7 +298,13 @@ func compareJob(ctx context.Context, r *recordFile, jobName string, report *chec
 	if err := m.place(header, j.Trial.Active, s.hamiltonian.Sector); err != nil {
 		return fmt.Errorf("%s: %w", r.name, err)
 	}
-	window, err := windowHamiltonian(s.hamiltonian, m)
+	return m.compareEnergy(s.hamiltonian, report, estimate)
+}
+
+// compareEnergy compares the energy of an estimate that nothing was done to with
+// the one that its record declares.
+func (m *measuredTrial) compareEnergy(h *hamiltonian.Hamiltonian, report *check.Report, estimate *amplitude.Estimate) error {
+	window, err := windowHamiltonian(h, m)
 	if err != nil {
 		return err
 	}
@@ -438,7 +434,7 @@ func collapseCommand(stderr io.Writer) *cobra.Command {
 			options := collapse.Options{Batches: batches, Calibration: channel}
 			e, err := runCollapse(c.Context(), r, options, shown.stage)
 			if err == nil && refine {
-				e, err = collapse.Refine(c.Context(), r.source, e, options)
+				e, err = collapse.Refine(c.Context(), r.source, e, onThisMachine(options, "refining", shown.stage))
 			}
 			if err != nil {
 				if record.CodeOf(err) != "" {

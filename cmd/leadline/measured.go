@@ -17,6 +17,7 @@ import (
 	"leadline/trial/expansion"
 	"leadline/trial/measured"
 	"leadline/trial/measured/amplitude"
+	"leadline/trial/measured/check"
 	"leadline/trial/measured/record"
 )
 
@@ -65,6 +66,9 @@ func (g *guidance) measure(ctx context.Context, j *job.Job, in *inputs, s *syste
 		return nil, err
 	}
 	in.hashes[j.Trial.Record] = hash
+	if err := g.checkEnergy(m, header, s.hamiltonian, estimate); err != nil {
+		return nil, fmt.Errorf("%s: %w", r.name, err)
+	}
 	if err := jobProjections(j.Trial).apply(estimate); err != nil {
 		return nil, fmt.Errorf("%s: %w", r.name, err)
 	}
@@ -74,6 +78,26 @@ func (g *guidance) measure(ctx context.Context, j *job.Job, in *inputs, s *syste
 	g.expansion = m.expansion(measured.Expansion(estimate, m.orbitals, m.core))
 	g.warnings = append(g.warnings, m.warnings()...)
 	return expansion.New(g.expansion)
+}
+
+// enumerable is the size of the sectors in which a declared energy is looked at
+// in every run; leadline measure check --job does so in all.
+const enumerable = 20000
+
+// checkEnergy warns of a record whose state does not have the energy that it
+// declares: the second line of defence against other orbitals, signs and orders.
+func (g *guidance) checkEnergy(m *measuredTrial, header *record.Header, h *hamiltonian.Hamiltonian, e *amplitude.Estimate) error {
+	if header.TrialEnergy == nil || e.Size() > enumerable {
+		return nil
+	}
+	report := &check.Report{DeclaredEnergy: header.TrialEnergy}
+	if err := m.compareEnergy(h, report, e); err != nil {
+		return err
+	}
+	for _, w := range report.Warnings {
+		g.warnings = append(g.warnings, afqmc.Warning{Check: "record_" + w.Check, Level: afqmc.Stop, Text: w.Text, Figure: w.Figure})
+	}
+	return nil
 }
 
 // place finds the measured window among the orbitals of the Hamiltonian.
@@ -128,16 +152,17 @@ func (m *measuredTrial) warnings() (out []afqmc.Warning) {
 		out = append(out, afqmc.Warning{Check: "record_settings", Level: afqmc.Caution, Figure: float64(m.settings),
 			Text: fmt.Sprintf("the record holds %d settings, at least %d are needed for its errors", m.settings, fewSettings)})
 	}
-	noise := m.estimate.Noise()
-	norm := 0.0
-	for _, c := range m.estimate.Mean() {
-		norm += real(c)*real(c) + imag(c)*imag(c)
-	}
-	if x := noise / math.Max(norm-noise, 1e-300); x > mostlyNoise {
+	if x := m.noiseRatio(); !(x >= 0 && x <= mostlyNoise) {
 		out = append(out, afqmc.Warning{Check: "record_noise", Level: afqmc.Stop, Figure: x,
 			Text: fmt.Sprintf("shot noise carries %.2g times the weight of the measured state, at most %g is usable; take more shots or project (real, spin)", x, mostlyNoise)})
 	}
 	return out
+}
+
+// noiseRatio is the weight of the noise in the amplitudes over that of the state;
+// negative or infinite where the state does not show.
+func (m *measuredTrial) noiseRatio() float64 {
+	return m.estimate.Noise() / m.estimate.NewForm(nil).Unbiased()
 }
 
 // walkerSNR says how well the measured trial knows the walkers' overlaps and, as
@@ -288,6 +313,13 @@ func (m *measuredTrial) report(ctx context.Context, r *jobRun, n *noiseWatch) er
 
 func (m *measuredTrial) noise(ctx context.Context, r *jobRun, n *noiseWatch) error {
 	out, h := r.summary, r.system.hamiltonian
+	x := m.noiseRatio()
+	out.Figures["record_shots"] = number(float64(m.estimate.Provenance.Shots))
+	out.Figures["record_infidelity"] = number(x / (1 + x))
+	if m.estimate.Reference == nil {
+		// Damping by κ costs shots: S κ².
+		out.Figures["record_effective_shots"] = number(float64(m.estimate.Provenance.Shots) * math.Max(0, m.estimate.NewForm(nil).Unbiased()))
+	}
 	if out.WalkerSNR = n.snr(); out.WalkerSNR == nil {
 		return nil
 	}
