@@ -350,7 +350,11 @@ func applyComplex(o *exact.Operator, dst, src []complex128) {
 
 func printReport(w io.Writer, name string, r *check.Report) error {
 	var b strings.Builder
-	fmt.Fprintf(&b, "%s: record of %d qubits, ensemble %s, row %v\n\n", name, r.Qubits, r.Ensemble, r.Row)
+	row := r.Row
+	if reference, ok := row.(map[string][]int); ok {
+		row = fmt.Sprintf("of the determinant %v", reference["occupied"])
+	}
+	fmt.Fprintf(&b, "%s: record of %d qubits, ensemble %s, row %v\n\n", name, r.Qubits, r.Ensemble, row)
 	fmt.Fprintf(&b, "  settings            %d\n  shots               %d\n", r.Settings, r.Shots)
 	fmt.Fprintf(&b, "  determinants        %d\n", r.Determinants)
 	fmt.Fprintf(&b, "  kappa               %s (1 without noise)\n", quoted(r.Kappa, r.KappaError))

@@ -81,20 +81,21 @@ func (r *Report) variance(h *record.Header, e *amplitude.Estimate) {
 	r.VarianceExpectedError = err
 }
 
-// rejections fills in the fractions of shots that contribute nothing.
+// rejections fills in the fractions of shots that contribute nothing; the error
+// is that of the difference from the expectation.
 func (r *Report) rejections(h *record.Header, e *amplitude.Estimate) {
 	f := Rejected{Cause: causeParity, Fraction: float64(e.Provenance.Rejected) / float64(r.Shots)}
-	if h.Ensemble.Clifford() {
-		weight := 0.5
-		if e.Reference != nil {
-			weight = referenceWeight(e, e.Mean())
-		}
-		f.Cause, f.Expected = causeCoset, 1-clifford.Reached(h.Qubits, weight)
-	}
 	f.Error = math.Sqrt(math.Max(f.Fraction, 1/float64(r.Shots)) / float64(r.Shots))
 	if h.Ensemble.Clifford() {
-		// All shots of a setting may miss together.
-		f.Error = math.Sqrt(f.Fraction * (1 - f.Fraction) / float64(r.Settings))
+		weight, uncertain := 0.5, 0.0
+		if e.Reference != nil {
+			weight = referenceWeight(e, e.Mean())
+			uncertain = real(e.Errors()[e.Up.Index(e.Reference[0])*e.Down.Len()+e.Down.Index(e.Reference[1])])
+		}
+		f.Cause, f.Expected = causeCoset, 1-clifford.Reached(h.Qubits, weight)
+		// All shots of a setting may miss together; and the expectation is from
+		// the record itself.
+		f.Error = math.Hypot(math.Sqrt(f.Fraction*(1-f.Fraction)/float64(r.Settings)), uncertain*(1-clifford.Reached(h.Qubits, 0)))
 	}
 	r.Rejected = []Rejected{f}
 }
