@@ -27,6 +27,8 @@ type doublesArea struct {
 	half     []float64
 	up, down excitations
 	terms    lanes.Terms
+	members  []int32 // walkers sorted by references
+	minors   [2][]float64
 }
 
 func (s *Source) newDoubles() doubles {

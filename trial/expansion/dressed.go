@@ -16,11 +16,8 @@ type factors struct {
 }
 
 // chunkWidth is about the number of columns of one chunk, so that its product
-// with a tile of walkers stays in the cache.
-const (
-	chunkWidth = 1024
-	rowsAtOnce = 384
-)
+// with a block of walkers stays in the cache.
+const chunkWidth = 1024
 
 func newFactors(s *Source, h *hamiltonian.Hamiltonian, r *trial.Rotated, spin int) *factors {
 	m, ns := s.sector.Orbitals, s.supported()
@@ -43,43 +40,40 @@ func newFactors(s *Source, h *hamiltonian.Hamiltonian, r *trial.Rotated, spin in
 	return f
 }
 
-// dress sets dst to B_g,ai = λ_a L̃_g Θ_i, rows (walker, part, particle, hole) of
-// ng numbers, for particles a and active holes i, λ_a = e_a − Σ_o Θ_ao e_o. Flops
-// for each walker: 4·ng·ns·M·ne for L̃Θ and 8·ng·ns·ne·(no−ne) for λ.
-func (f *factors) dress(dst []float64, a *energyArea, form *form, w trial.Walkers, spin int) []float64 {
+// dress sets dst to B_g,ai = λ_a L̃_g Θ_i of the walkers from ≤ i < to, rows (walker,
+// part, particle, hole) of ng numbers, for particles a and active holes i,
+// λ_a = e_a − Σ_o Θ_ao e_o. Flops for each walker: 4·ng·ns·M·ne for L̃Θ and
+// 16·ng·ns·ne·(no−ne) for λ.
+func (f *factors) dress(dst []float64, a *energyArea, form *form, w trial.Walkers, from, to, spin int) []float64 {
 	s := f.s
 	m, ns, ng := s.sector.Orbitals, s.supported(), len(f.sign)
 	ne := s.spaces[spin].electrons
 	np := s.active - ne
-	rows := 2 * np * ne // of one walker
-	dst = trial.Grow(dst, w.Count*rows*ng)
-	a.columns = trial.Grow(a.columns, 2*w.Count*ne*m)
-	a.left = trial.Grow(a.left, w.Count*4*np*ns)
-	for i := range w.Count {
-		columns, left := a.columns[2*i*ne*m:][:2*ne*m], a.left[4*i*np*ns:][:4*np*ns]
-		if form.frames[i] == nil {
+	rows, walkers := 2*np*ne, to-from
+	dst = trial.Grow(dst, walkers*rows*ng)
+	a.columns = trial.Grow(a.columns, 2*walkers*ne*m)
+	a.left = trial.Grow(a.left, walkers*4*np*ns)
+	for k := range walkers {
+		columns, left := a.columns[2*k*ne*m:][:2*ne*m], a.left[4*k*np*ns:][:4*np*ns]
+		if form.frames[from+k] == nil {
 			clear(columns)
 			clear(left)
 			continue
 		}
-		s.activeColumns(columns, a, form, w, i, spin)
-		s.leftVectors(left, form, i, spin)
+		s.activeColumns(columns, a, form, w, from+k, spin)
+		s.leftVectors(left, form, from+k, spin)
 	}
-	step := max(1, rowsAtOnce/(2*ne))
-	for from := 0; from < w.Count; from += step {
-		to := min(w.Count, from+step)
-		for c, operand := range f.chunks {
-			_, width := operand.Dims()
-			count := width / ns
-			a.products = trial.Grow(a.products, 2*step*ne*width)
-			operand.Mul(2*(to-from)*ne, 1, a.columns[2*from*ne*m:], m, 0, a.products, width)
-			for i := from; i < to; i++ {
-				for hole := range ne {
-					// [Re λ, −Im λ; Im λ, Re λ]·[Re; Im], 2(no−ne)×2ns by 2ns×chunk
-					linalg.Gemm(false, false, 2*np, count, 2*ns, 1, a.left[4*i*np*ns:], 2*ns,
-						a.products[2*((i-from)*ne+hole)*width:], count, 0,
-						dst[(i*rows+hole)*ng+c*f.chunk:], ne*ng)
-				}
+	for c, operand := range f.chunks {
+		_, width := operand.Dims()
+		count := width / ns
+		a.products = trial.Grow(a.products, 2*walkers*ne*width)
+		operand.Mul(2*walkers*ne, 1, a.columns, m, 0, a.products, width)
+		for k := range walkers {
+			for hole := range ne {
+				// [Re λ, −Im λ; Im λ, Re λ]·[Re; Im], 2(no−ne)×2ns by 2ns×chunk
+				linalg.Gemm(false, false, 2*np, count, 2*ns, 1, a.left[4*k*np*ns:], 2*ns,
+					a.products[2*(k*ne+hole)*width:], count, 0,
+					dst[(k*rows+hole)*ng+c*f.chunk:], ne*ng)
 			}
 		}
 	}

@@ -67,9 +67,9 @@ type energyArea struct {
 	sum      []complex128
 	density  []float64
 	products []float64
-	columns  []float64    // Θ of the active holes: rows (walker, hole, part) of M
+	columns  []float64    // Θ of the active holes of one block: rows (walker, hole, part) of M
 	left     []float64    // λ
-	dressed  [2][]float64 // B: rows (walker, part, particle, hole) of ng
+	dressed  [2][]float64 // B of one block: rows (walker, part, particle, hole) of ng
 	signed   []float64
 	square   []float64 // product of two B
 	v        []complex128
@@ -168,22 +168,21 @@ func (e *energies) correlate(energy []complex128, a *energyArea, w trial.Walkers
 	sides := [2]*side{up, down}
 	x := [2]int{s.spaces[0].excitations(), s.spaces[1].excitations()}
 	shared := up.form == down.form && e.spins == 1
-	for spin, one := range sides {
-		if x[spin] > 0 && !(spin == hamiltonian.Down && shared) {
-			a.dressed[spin] = e.factors[spin].dress(a.dressed[spin], a, one.form, w, spin)
-		}
-	}
 	if x[0] > 0 && x[1] > 0 {
 		a.mixed = trial.Grow(a.mixed, w.Count*x[0]*x[1])
 		e.doubles.mixed(a.mixed, &a.doubles, up.form, down.form, w.Count)
 	}
 	for b := range blocks(w.Count) {
+		from, to := b*lanes.Width, min(w.Count, (b+1)*lanes.Width)
 		for spin, one := range sides {
 			if spin == hamiltonian.Up || down != up {
 				s.curve(a, one, b, w.Count, spin)
 			}
+			if x[spin] > 0 && !(spin == hamiltonian.Down && shared) {
+				a.dressed[spin] = e.factors[spin].dress(a.dressed[spin], a, one.form, w, from, to, spin)
+			}
 		}
-		for i := b * lanes.Width; i < min(w.Count, (b+1)*lanes.Width); i++ {
+		for i := from; i < to; i++ {
 			if up.frames[i] != nil && down.frames[i] != nil && a.total[0][i] != 0 {
 				energy[i] += 0.5 * e.cumulant(a, up, down, i, x, shared)
 			}
@@ -234,7 +233,8 @@ func (e *energies) cumulant(a *energyArea, up, down *side, i int, x [2]int, shar
 func (e *energies) square(a *energyArea, i, spin, other int, x [2]int) {
 	ng := e.h.Factors.Count()
 	rows, columns := x[spin], x[other]
-	left, right := a.dressed[spin][2*i*rows*ng:][:2*rows*ng], a.dressed[other][2*i*columns*ng:][:2*columns*ng]
+	lane := i % lanes.Width
+	left, right := a.dressed[spin][2*lane*rows*ng:][:2*rows*ng], a.dressed[other][2*lane*columns*ng:][:2*columns*ng]
 	a.square = trial.Grow(a.square, 4*rows*columns)
 	a.v = trial.Grow(a.v, rows*columns)
 	if ng == 0 {

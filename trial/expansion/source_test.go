@@ -237,27 +237,35 @@ func TestConcurrent(t *testing.T) {
 
 // A list with more references than frames are kept still gives the same.
 func TestFewFrames(t *testing.T) {
-	c := windows[24]
-	e := c.expansion(t, 7)
-	w := trialtest.RandomWalkers(e.Sector(), false, 40, 3)
-	var overlaps [2][]trial.Overlap
-	for k := range overlaps {
-		s, err := New(e)
-		if err != nil {
-			t.Fatal(err)
+	for _, k := range []int{1, 24} {
+		c := windows[k]
+		e := c.expansion(t, 7)
+		w := trialtest.RandomWalkers(e.Sector(), false, 40, 3)
+		var results [2]*trial.Mixed
+		for k := range results {
+			s, err := New(e)
+			if err != nil {
+				t.Fatal(err)
+			}
+			if k == 1 {
+				s.spaces[0].framesLeft = 1
+				s.spaces[1].framesLeft = 1
+			}
+			guide, err := trial.NewGuide(c.hamiltonian(), s, 1<<30)
+			if err != nil {
+				t.Fatal(err)
+			}
+			results[k] = guide.NewMixed(w.Count)
+			for range 2 {
+				guide.Evaluate(results[k], w)
+				guide.LocalEnergies(results[k], w)
+			}
 		}
-		if k == 1 {
-			s.spaces[0].framesLeft = 1
-			s.spaces[1].framesLeft = 1
-		}
-		overlaps[k] = make([]trial.Overlap, w.Count)
-		for range 2 {
-			s.Overlaps(overlaps[k], w)
-		}
-	}
-	for i := range w.Count {
-		if overlaps[0][i] != overlaps[1][i] {
-			t.Errorf("walker %d: %v with all frames, %v with one", i, overlaps[0][i], overlaps[1][i])
+		for i := range w.Count {
+			if results[0].Overlap[i] != results[1].Overlap[i] || results[0].Energy[i] != results[1].Energy[i] {
+				t.Errorf("%s, walker %d: %v, %v with all frames, %v, %v with one", c.name, i,
+					results[0].Overlap[i], results[0].Energy[i], results[1].Overlap[i], results[1].Energy[i])
+			}
 		}
 	}
 }

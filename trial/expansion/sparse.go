@@ -1,7 +1,9 @@
 package expansion
 
 import (
+	"cmp"
 	"math/cmplx"
+	"slices"
 
 	"leadline/hamiltonian"
 	"leadline/trial"
@@ -51,10 +53,10 @@ func (c *sparse) contract(y, d []float64, count, spin int, _ *[]float64) {
 	}
 }
 
-// sparseDoubles works through blocks of walkers in lanes, once for each pair of
-// references in a block, and excitations b, j: E_bj d_down, C† of it, and the sums
-// over up strings, 8·x_down·(elements of C + S_up-strings' excitations) flops in
-// all for each walker.
+// sparseDoubles works through eights of walkers with the same references, in
+// lanes: excitations b, j, E_bj d_down, C† of it, and the sums over up strings,
+// 8·x_down·(elements of C + excitations that lead to the up strings) flops in all
+// for each walker.
 type sparseDoubles struct {
 	s *Source
 	c *sparse
@@ -70,47 +72,70 @@ type excitations struct {
 
 func (d *sparseDoubles) mixed(dst []complex128, a *doublesArea, up, down *form, count int) {
 	s := d.s
-	nUp, nDown := d.c.strings[0], d.c.strings[1]
-	spaceUp, spaceDown := s.spaces[0], s.spaces[1]
-	xUp, xDown := spaceUp.excitations(), spaceDown.excitations()
-	a.half, a.full = trial.Grow(a.half, nUp*lanes.Size), trial.Grow(a.full, nDown*lanes.Size)
-	a.result = trial.Grow(a.result, xUp*lanes.Size)
-	for b := range blocks(count) {
-		mUp, mDown := up.blockMinors(spaceUp, b), down.blockMinors(spaceDown, b)
-		first, last := b*lanes.Width, min(count, (b+1)*lanes.Width)
-		for i := first; i < last; i++ {
-			if up.frames[i] == nil || down.frames[i] == nil || earlier(up, down, first, i) {
-				continue
-			}
-			spaceUp.list(&a.up, up.frames[i])
-			a.up.terms(&a.terms)
-			spaceDown.list(&a.down, down.frames[i])
-			for x := range xDown {
-				d.excite(a, x, mDown)
-				d.c.rows[hamiltonian.Up].Combine(a.half, a.full)
-				a.terms.Multiply(a.result, a.half, mUp, false)
-				for j := i; j < last; j++ {
-					if up.frames[j] == up.frames[i] && down.frames[j] == down.frames[i] {
-						for k := range xUp {
-							at := k*lanes.Size + j%lanes.Width
-							dst[(j*xDown+x)*xUp+k] = complex(a.result[at], a.result[at+lanes.Width])
-						}
-					}
-				}
-			}
+	alike := func(i, j int32) bool { return up.frames[i] == up.frames[j] && down.frames[i] == down.frames[j] }
+	a.members = a.members[:0]
+	for i := range count {
+		if up.frames[i] != nil && down.frames[i] != nil {
+			a.members = append(a.members, int32(i))
 		}
+	}
+	slices.SortStableFunc(a.members, func(i, j int32) int {
+		return cmp.Or(cmp.Compare(up.frames[i].reference, up.frames[j].reference), cmp.Compare(down.frames[i].reference, down.frames[j].reference))
+	})
+	for from := 0; from < len(a.members); {
+		to := from + 1
+		for to < min(len(a.members), from+lanes.Width) && alike(a.members[from], a.members[to]) {
+			to++
+		}
+		members := a.members[from:to]
+		from = to
+		d.eight(dst, a, members, up.frames[members[0]], down.frames[members[0]],
+			s.spaces[0].together(&a.minors[0], up, members), s.spaces[1].together(&a.minors[1], down, members))
 	}
 }
 
-// earlier reports whether a walker from first on and before i has the references
-// of walker i.
-func earlier(up, down *form, first, i int) bool {
-	for j := first; j < i; j++ {
-		if up.frames[j] == up.frames[i] && down.frames[j] == down.frames[i] {
-			return true
+// together returns the minors of up to eight walkers in lanes, one after the
+// other: their block's own, or copies.
+func (s *space) together(copies *[]float64, form *form, members []int32) []float64 {
+	block := int(members[0]) / lanes.Width
+	whole := len(members) == lanes.Width
+	for lane, i := range members {
+		whole = whole && int(i) == block*lanes.Width+lane
+	}
+	if whole {
+		return form.blockMinors(s, block)
+	}
+	*copies = trial.Grow(*copies, s.minors()*lanes.Size)
+	for lane, i := range members {
+		from := form.blockMinors(s, int(i)/lanes.Width)[int(i)%lanes.Width:]
+		to := (*copies)[lane:]
+		for at := 0; at < len(from); at += lanes.Width {
+			to[at] = from[at]
 		}
 	}
-	return false
+	return *copies
+}
+
+// eight computes D of up to eight walkers with the same references.
+func (d *sparseDoubles) eight(dst []complex128, a *doublesArea, members []int32, up, down *frame, mUp, mDown []float64) {
+	spaceUp, spaceDown := d.s.spaces[0], d.s.spaces[1]
+	xUp, xDown := spaceUp.excitations(), spaceDown.excitations()
+	a.half, a.full = trial.Grow(a.half, d.c.strings[0]*lanes.Size), trial.Grow(a.full, d.c.strings[1]*lanes.Size)
+	a.result = trial.Grow(a.result, xUp*lanes.Size)
+	spaceUp.list(&a.up, up)
+	a.up.terms(&a.terms)
+	spaceDown.list(&a.down, down)
+	for x := range xDown {
+		d.excite(a, x, mDown)
+		d.c.rows[hamiltonian.Up].Combine(a.half, a.full)
+		a.terms.Multiply(a.result, a.half, mUp, false)
+		for lane, i := range members {
+			for k := range xUp {
+				at := k*lanes.Size + lane
+				dst[(int(i)*xDown+x)*xUp+k] = complex(a.result[at], a.result[at+lanes.Width])
+			}
+		}
+	}
 }
 
 // excite sets a.full to E_bj d_down for excitation number x, in lanes.
