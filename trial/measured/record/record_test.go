@@ -10,6 +10,7 @@ import (
 	"path/filepath"
 	"strings"
 	"testing"
+	"testing/iotest"
 
 	"github.com/google/go-cmp/cmp"
 	"github.com/google/go-cmp/cmp/cmpopts"
@@ -356,6 +357,46 @@ func TestSpatialWindow(t *testing.T) {
 		h.Active = &w
 		if _, _, err := h.SpatialWindow(); err == nil {
 			t.Errorf("window %v: no error", w)
+		}
+	}
+}
+
+// TestRestarted reads records that cannot be looked at from their end: the
+// totals are known all the same, and what is cut short is refused with its place.
+func TestRestarted(t *testing.T) {
+	for _, name := range []string{"matching_n4", "tableau_n4"} {
+		content, err := os.ReadFile(filepath.Join("testdata", name+".jsonl"))
+		if err != nil {
+			t.Fatal(err)
+		}
+		opened := 0
+		open := func(content []byte) record.Source {
+			return record.Restarted(name, func() (io.Reader, error) {
+				opened++
+				return iotest.HalfReader(bytes.NewReader(content)), nil
+			})
+		}
+		source := open(content)
+		for range 2 {
+			st, err := source()
+			if err != nil {
+				t.Fatal(err)
+			}
+			settings, shots := st.Declared()
+			if total, err := record.Total(st); err != nil || total != settings || settings != 50 || shots < 50 {
+				t.Errorf("%s: %d settings and %d shots declared, total %d, %v", name, settings, shots, total, err)
+			}
+		}
+		if opened != 3 {
+			t.Errorf("%s: opened %d times for two readings, expected 3", name, opened)
+		}
+		st, err := open(content[:len(content)/2])()
+		if err != nil {
+			t.Fatal(err)
+		}
+		_, err = record.Total(st)
+		if code := record.CodeOf(err); code != record.CodeTruncated && code != record.CodeJSON {
+			t.Errorf("%s cut short: %v", name, err)
 		}
 	}
 }
