@@ -8,6 +8,9 @@ import (
 	"sync"
 	"testing"
 
+	"gonum.org/v1/gonum/mat"
+
+	"leadline/hamiltonian"
 	"leadline/trial"
 	"leadline/trial/expansion/internal/lanes"
 	"leadline/trial/trialtest"
@@ -267,5 +270,68 @@ func TestFewFrames(t *testing.T) {
 					results[0].Overlap[i], results[0].Energy[i], results[1].Overlap[i], results[1].Energy[i])
 			}
 		}
+	}
+}
+
+// A short list in a window of 10626 strings for each spin, too large for anything
+// over all determinants: density and local energy against what overlaps alone
+// give, expectation values against the local energy of the state itself.
+func TestLargeWindow(t *testing.T) {
+	rng := rand.New(rand.NewPCG(3, 1))
+	e := &Expansion{Orbitals: 26, Core: 1, Active: 24, Up: 4, Down: 3}
+	pick := func(n int) (mask uint64) {
+		for bits.OnesCount64(mask) < n {
+			mask |= 1 << rng.IntN(e.Active)
+		}
+		return mask
+	}
+	for range 60 {
+		e.Determinants = append(e.Determinants, Determinant{Up: pick(4), Down: pick(3), Amplitude: complex(rng.NormFloat64(), rng.NormFloat64())})
+	}
+	s, err := New(unique(e))
+	if err != nil {
+		t.Fatal(err)
+	}
+	h := trialtest.RandomHamiltonian(e.Sector(), 3, 1, false, 2)
+	w := trialtest.RandomWalkers(e.Sector(), false, 2, 4)
+	var results [2]*trial.Mixed
+	for k, source := range []trial.Source{s, trial.Complete(s)} {
+		guide, err := trial.NewGuide(h, source, 1<<30)
+		if err != nil {
+			t.Fatal(err)
+		}
+		results[k] = guide.NewMixed(w.Count)
+		guide.Evaluate(results[k], w)
+		guide.LocalEnergies(results[k], w)
+	}
+	for k, want := range results[1].Fields {
+		if math.Abs(results[0].Fields[k]-want) > 1e-9*(1+math.Abs(want)) {
+			t.Errorf("field %d is %v, from overlaps %v", k, results[0].Fields[k], want)
+		}
+	}
+	for i, want := range results[1].Energy {
+		if cmplx.Abs(results[0].Energy[i]-want) > 1e-9*(1+cmplx.Abs(want)) {
+			t.Errorf("local energy %d is %v, from overlaps %v", i, results[0].Energy[i], want)
+		}
+	}
+	if _, _, _, ok := s.whole(); ok {
+		t.Fatal("the window is spread out over all determinants")
+	}
+	density := s.OneBodyDensity()
+	for spin := range 2 {
+		if trace := mat.Trace(density[spin]); math.Abs(trace-float64(w.Electrons(spin))) > 1e-10 {
+			t.Errorf("trace of the density of spin %d is %v", spin, trace)
+		}
+	}
+	var oneBody float64
+	for spin := range 2 {
+		var product mat.Dense
+		product.Mul(h.OneBody[spin], density[spin])
+		oneBody += mat.Trace(&product)
+	}
+	bare := *h
+	bare.Factors = hamiltonian.NewFactors(e.Orbitals, 0)
+	if got, want := s.Energy(&bare), h.Constant+oneBody; math.Abs(got-want) > 1e-10*(1+math.Abs(want)) {
+		t.Errorf("one-body energy %v, from the density %v", got, want)
 	}
 }
