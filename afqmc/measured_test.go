@@ -152,10 +152,10 @@ func TestMeasuredTrials(t *testing.T) {
 			}
 			s := newMeasuredSystem(t, c.name, c.exact)
 			const shots = 20
-			t.Logf("%9s  %10s  %9s  %9s  %9s  %9s  %9s  %9s", "shots", "infidelity", "bias", "rms", "statist.", "measurem.", "halves/2", "SE(E_L)")
+			t.Logf("%9s  %10s  %9s  %9s  %9s  %9s  %9s  %9s  %9s", "shots", "infidelity", "bias", "rms", "statist.", "measurem.", "halves/2", "its stat.", "SE(E_L)")
 			most := 0.0
 			for k, settings := range c.settings {
-				var deviation, statistical, predicted, halved, infidelity, local []float64
+				var deviation, statistical, predicted, halved, paired, pulls, infidelity, local []float64
 				for seed := range c.records {
 					e := s.estimate(t, s.record(t, simulate.Options{Ensemble: c.ensemble, Settings: settings, ShotsPerSetting: shots, Seed: uint64(100*k + seed + 1)}))
 					r, rows := s.runExpansion(t, s.place(e), c.length)
@@ -166,13 +166,14 @@ func TestMeasuredTrials(t *testing.T) {
 					first, second := measured.HalfExpansions(e, s.h.Orbitals, 0)
 					_, a := s.runExpansion(t, first, c.length)
 					_, b := s.runExpansion(t, second, c.length)
-					difference, paired := pairedDifference(a, b)
+					difference, pairedError := pairedDifference(a, b)
 					x := e.Noise()
 					infidelity = append(infidelity, x/(1+x))
 					deviation = append(deviation, 1e3*(r.Energy.Mean-c.exact))
 					statistical = append(statistical, 1e3*r.Energy.Error)
 					predicted = append(predicted, 1e3*errors.Mixed)
-					halved = append(halved, 1e3*math.Sqrt(math.Max(0, difference*difference-paired*paired))/2)
+					halved, paired = append(halved, 1e3*difference/2), append(paired, 1e3*pairedError/2)
+					pulls = append(pulls, difference/math.Hypot(2*errors.Mixed, pairedError))
 					local = append(local, 1e3*errors.Local)
 					if k == len(c.settings)-1 {
 						if sigma := math.Hypot(r.Energy.Error, errors.Mixed); math.Abs(r.Energy.Mean-c.exact) > 4*sigma {
@@ -182,16 +183,17 @@ func TestMeasuredTrials(t *testing.T) {
 					}
 				}
 				spread := rms(deviation)
-				t.Logf("%9d  %10.2e  %+9.3f  %9.3f  %9.3f  %9.3f  %9.3f  %9.3f", shots*settings, stat.Mean(infidelity, nil), stat.Mean(deviation, nil), spread,
-					rms(statistical), rms(predicted), rms(halved), stat.Mean(local, nil))
+				t.Logf("%9d  %10.2e  %+9.3f  %9.3f  %9.3f  %9.3f  %9.3f  %9.3f  %9.3f", shots*settings, stat.Mean(infidelity, nil), stat.Mean(deviation, nil), spread,
+					rms(statistical), rms(predicted), rms(halved), rms(paired), stat.Mean(local, nil))
 				most = max(most, spread)
 				if k > 0 && k == len(c.settings)-1 && spread > 0.35*most {
 					t.Errorf("%d shots: deviation %.3f mEh, was %.3f with fewer", shots*settings, spread, most)
 				}
-				// A standard deviation from so few records is known within a
-				// factor of two at three sigma.
-				if ratio := rms(halved) / rms(predicted); c.records >= 3 && k > 0 && (ratio > 2.2 || ratio < 0.4) {
-					t.Errorf("%d shots: half differences say %.3f mEh, the jackknife %.3f", shots*settings, rms(halved), rms(predicted))
+				// χ² per record of the half differences, three sigma; from 10⁴ shots
+				// on, where the noise is small enough for linear propagation.
+				n := float64(len(pulls))
+				if x := rms(pulls) * rms(pulls); k > 0 && n > 1 && (x > 1+3*math.Sqrt(2/n) || x < 0.05) {
+					t.Errorf("%d shots: half differences are %.2f times their predicted error, measurement and statistics", shots*settings, math.Sqrt(x))
 				}
 			}
 		})

@@ -68,6 +68,9 @@ func readCollapsed(name string, batches int) *amplitude.Estimate {
 	if gob.NewDecoder(file).Decode(&c) != nil || c.Version != cacheVersion || c.Batches != batches {
 		return nil
 	}
+	if c.Orbitals < 1 || c.Orbitals > 32 || min(c.Up, c.Down) < 0 || max(c.Up, c.Down) > c.Orbitals {
+		return nil
+	}
 	size := strings.Count(c.Orbitals, c.Up) * strings.Count(c.Orbitals, c.Down)
 	if len(c.Means) == 0 || len(c.Means) != len(c.Weights) {
 		return nil
