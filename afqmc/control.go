@@ -10,7 +10,10 @@ func (w *Walk) Control() error {
 	s := w.State
 	n := len(s.Weight)
 	sum, square := s.totalWeight()
-	if !(sum > 0) || math.IsInf(sum, 0) {
+	if math.IsInf(square, 0) || math.IsNaN(sum) {
+		return errOverflow
+	}
+	if sum == 0 {
 		return errExtinct
 	}
 	s.Interval.Efficiency += sum * sum / (float64(n) * square)

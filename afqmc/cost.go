@@ -23,8 +23,9 @@ type Cost struct {
 // takes the same path everywhere.
 const ExchangeMemory = 256 << 20
 
-// EstimateCost returns the cost of a projection before anything is allocated.
-// paired says that one spin stands for both, order is the length of the series.
+// EstimateCost returns the cost of a projection before anything is allocated,
+// in double precision and with six terms in the series of the exponential.
+// paired says that one spin stands for both.
 func EstimateCost(h *hamiltonian.Hamiltonian, support trial.Support, paired bool, o Options) Cost {
 	const order = 6
 	o = o.withDefaults()
@@ -52,6 +53,10 @@ func EstimateCost(h *hamiltonian.Hamiltonian, support trial.Support, paired bool
 	half := 8 * m * m * columns
 	bias := 4 * ng * summed
 	density := 12 * m * columns * columns
+	planes := 1.0
+	if !support.Real() {
+		planes = 2
+	}
 	energy := (4 * rotated * rotated / 2) / float64(o.every(measureInterval))
 	c := Cost{StepFlops: fields + series + half + bias + density + energy, Steps: steps * int64(o.Walkers)}
 	c.Flops = c.StepFlops * float64(c.Steps)
@@ -59,9 +64,10 @@ func EstimateCost(h *hamiltonian.Hamiltonian, support trial.Support, paired bool
 	tile := min(walkers, tileSize)
 	area := 2*tile*pairs + 2*tile*ng + 2*m*m + 4*m*columns*tile + 2*tile*(rotated+summed)
 	tables := rotated * rotated / 2
-	if 8*tables > ExchangeMemory {
+	if 8*planes*tables > ExchangeMemory {
 		tables = ng * summed
 	}
-	c.Bytes = int64(8 * (walkers*(2*m*columns+2*ng) + spins*2*ng*pairs + ng*summed + tables + float64(o.Cores)*area))
+	tables *= planes
+	c.Bytes = int64(8 * (walkers*(2*m*columns+2*ng) + spins*2*ng*pairs + planes*ng*summed + tables + float64(min(o.Cores, len(tiles(o.Walkers))))*area))
 	return c
 }

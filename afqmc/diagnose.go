@@ -62,7 +62,6 @@ var (
 	limitPhase      = threshold{ok: 0.1, warn: 0.5, fail: 2, failed: Caution}
 	limitHill       = threshold{ok: 3, warn: 2.5, fail: 2.1, failed: Stop, larger: true}
 	limitRatio      = threshold{ok: 2.2, warn: 2.5, fail: 4, failed: Caution}
-	limitLargest    = threshold{ok: 100, warn: 100, fail: 100, failed: Caution}
 	limitSpin       = threshold{ok: 0.01, warn: 0.01, fail: 0.1, failed: Stop}
 	limitDrift      = threshold{ok: 2, warn: 2, fail: 3, failed: Caution}
 )
@@ -106,11 +105,13 @@ func diagnose(w *Walk, r *Result) []Warning {
 			"local energies have a heavy tail (exponent %.2g): the error bar is soft above 2 and meaningless below; a better trial is needed", f.Local.Hill)
 		add("energy_spread", limitRatio.grade(f.Local.Ratio), f.Local.Ratio,
 			"local energies spread %.2g times wider than their core: heavy tail, a longer run than the error suggests is needed", f.Local.Ratio)
-		add("largest_energy", limitLargest.grade(f.Local.Largest), f.Local.Largest,
+		limit := max(100, 2*math.Cbrt(float64(f.Local.Samples)))
+		add("largest_energy", threshold{ok: limit, warn: limit, fail: limit, failed: Caution}.grade(f.Local.Largest), f.Local.Largest,
 			"one local energy lies %.3g standard deviations away: the trial may have nodes where the state has none", f.Local.Largest)
 	}
 	e := r.Energy
-	if e.Blocked > 0 && e.Correlated > 0 {
+	fluctuates := f.Local.Deviation > noSpread || math.IsNaN(f.Local.Deviation)
+	if fluctuates && e.Blocked > 0 && e.Correlated > 0 {
 		ratio := e.Blocked / e.Correlated
 		switch {
 		case ratio < 0.6 || ratio > 1.6:
@@ -119,21 +120,24 @@ func diagnose(w *Walk, r *Result) []Warning {
 			add("error_methods", Note, ratio, "the errors from blocking and from autocorrelation differ by a factor %.2g; the larger is quoted", ratio)
 		}
 	}
-	if e.TooShort() {
+	if fluctuates && e.TooShort() {
 		independent := float64(e.Rows) / (2 * e.Autocorrelation)
 		add("run_length", Caution, independent, "too short for its error bar: about %.0f independent samples, at least 20 and a settled block length are needed; lengthen the run", independent)
+	}
+	if !fluctuates {
+		f.Drift = 0
 	}
 	add("drift", limitDrift.grade(f.Drift), f.Drift,
 		"the two halves of the run differ by %.2g standard deviations; longer equilibration may be needed", f.Drift)
 	if r.Discarded > 0 {
 		add("equilibration", Note, r.Discarded, "the first %.3g of sampled imaginary time still drifted and were left out", r.Discarded)
 	}
-	if !math.IsNaN(r.TrialEnergy) && e.Mean > r.TrialEnergy+3*e.Error {
+	if !math.IsNaN(r.TrialEnergy) && e.Mean > r.TrialEnergy+3*e.Error+noSpread {
 		add("variational_bracket", Caution, e.Mean-r.TrialEnergy, "the energy lies %.3g above the trial's own energy, which projection should lower", e.Mean-r.TrialEnergy)
 	}
 	sz := 0.5 * math.Abs(float64(w.Guide.Hamiltonian.Up-w.Guide.Hamiltonian.Down))
 	contamination := math.Abs(w.startSpinSquared - sz*(sz+1))
-	add("start_spin", limitSpin.grade(contamination), w.startSpinSquared,
+	add("start_spin", limitSpin.grade(contamination), contamination,
 		"the walkers start with <S^2> = %.3f, not the pure spin %.3g: the projection keeps other spins for long", w.startSpinSquared, sz*(sz+1))
 	return out
 }

@@ -5,11 +5,11 @@ import (
 	"math"
 )
 
-// Options are the settings of a projection. Zero fields take the defaults.
+// Options are the settings of a projection. Zero fields take the defaults named.
 type Options struct {
 	TimeStep      float64 // τ, 1/hartree; default 0.005
 	Walkers       int     // default 400
-	Equilibration float64 // imaginary time before sampling; default 5
+	Equilibration float64 // imaginary time before sampling; zero: none
 	Length        float64 // imaginary time sampled; default 50
 	Seed          uint64
 	// TargetError ends sampling once one standard error is this small; 0: never.
@@ -17,8 +17,10 @@ type Options struct {
 	// Cap bounds E_hyb and E_L to the running energy ± √(2/τ). Automatic: on
 	// unless a factor has s = −1, where the cap would bias sign-free problems.
 	Cap Cap
-	// Single takes fields, their exponential and the force bias in single
-	// precision; overlaps, weights, local energies and sums stay double.
+	// Single takes fields and their exponential in single precision; with a guide
+	// from [trial.NewSingleGuide] the expectations ⟨v_g⟩ are too, and with them
+	// force bias and direct energy. Overlaps, weights, one-body and exchange
+	// energies and sums stay double.
 	Single bool
 	// Cores is the number of goroutines that work on tiles; default 1. Results
 	// do not depend on it.
@@ -46,7 +48,6 @@ func (o Options) withDefaults() Options {
 		}
 	}
 	set(&o.TimeStep, 0.005)
-	set(&o.Equilibration, 5)
 	set(&o.Length, 50)
 	if o.Walkers == 0 {
 		o.Walkers = 400

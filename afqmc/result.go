@@ -2,7 +2,6 @@ package afqmc
 
 import (
 	"math"
-	"slices"
 
 	"leadline/afqmc/statistics"
 )
@@ -159,9 +158,8 @@ func (w *Walk) analyse(s *samples, status Status) *Result {
 			r.Figures.Drift = math.Abs(second.Mean-first.Mean) / (2 * r.Energy.Error)
 		}
 	}
-	local := slices.Clone(s.local)
-	r.Figures.Local = statistics.Describe(local)
-	r.Figures.TailSamples = int(statistics.TailFraction * float64(len(local)))
+	r.Figures.Local = statistics.Describe(s.local)
+	r.Figures.TailSamples = int(statistics.TailFraction * float64(len(s.local)))
 	r.Warnings = diagnose(w, r)
 	return r
 }

@@ -8,7 +8,10 @@ import (
 	"leadline/trial"
 )
 
-var errExtinct = errors.New("no walker is left alive: the constraint killed all of them; check the trial and the time step")
+var (
+	errExtinct  = errors.New("no walker is left alive: the constraint killed all of them; check the trial and the time step")
+	errOverflow = errors.New("the weights overflowed: check the trial and the time step")
+)
 
 // Row is one energy measurement.
 type Row struct {
@@ -59,7 +62,10 @@ func (w *Walk) Run(ctx context.Context, rec Recorder) (*Result, error) {
 			return nil, err
 		}
 		if measure {
-			row := w.measure()
+			row, err := w.measure()
+			if err != nil {
+				return nil, err
+			}
 			if next == equilibration {
 				w.State.Total = Counters{} // diagnostics are about the sampled part
 			}
@@ -98,7 +104,7 @@ const checkEvery = 10
 
 // measure sums the local energies of the last step into a row, in walker order,
 // and moves the reference energy.
-func (w *Walk) measure() Row {
+func (w *Walk) measure() (Row, error) {
 	s := w.State
 	bound := math.Inf(1)
 	if w.cap {
@@ -120,6 +126,9 @@ func (w *Walk) measure() Row {
 		imaginary += weight * imag(w.energy[i])
 		square += weight * weight
 	}
+	if row.Weight == 0 {
+		return row, errExtinct
+	}
 	row.Energy = row.Numerator / row.Weight
 	row.Imaginary = imaginary / row.Weight
 	row.Effective = row.Weight * row.Weight / square
@@ -127,12 +136,10 @@ func (w *Walk) measure() Row {
 	interval := w.Options.TimeStep * float64(w.Options.every(measureInterval))
 	row.Growth = (s.GrowthTime - (logNorm - s.GrowthReference)) / interval
 	s.GrowthReference, s.GrowthTime = logNorm, 0
-	if row.Weight > 0 {
-		s.ReferenceEnergy += smoothing * (row.Energy - s.ReferenceEnergy)
-	}
+	s.ReferenceEnergy += smoothing * (row.Energy - s.ReferenceEnergy)
 	s.Total.add(s.Interval)
 	s.Interval = Counters{}
-	return row
+	return row, nil
 }
 
 // smoothing is the share of a new measurement in the running energy.

@@ -25,11 +25,12 @@ type State struct {
 	// that E_T follows.
 	ReferenceEnergy float64
 	// LogGrowth is the logarithm of all factors taken out of the weights by
-	// population control, plus ∫(E − E_T) bookkeeping: see the growth energy.
+	// population control.
 	LogGrowth float64
-	// GrowthReference is what LogGrowth + ln(mean weight) was, and GrowthTime the
-	// integral of E_T over imaginary time, since the last measurement.
-	GrowthReference, GrowthTime float64
+	// GrowthReference is LogGrowth + ln(mean weight) at the last measurement.
+	GrowthReference float64
+	// GrowthTime is the integral of E_T over imaginary time since then.
+	GrowthTime float64
 	// Counters since the last measurement and over the run.
 	Interval, Total Counters
 	// Checks are extremes over the run.

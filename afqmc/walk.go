@@ -168,12 +168,12 @@ func (w *Walk) Step(orthogonalise, measure bool) error {
 	s.Step++
 	s.GrowthTime += s.TrialEnergy * w.Options.TimeStep
 	for i, e := range w.events {
+		if s.Weight[i] == 0 && e&eventKilled == 0 {
+			continue // dead since an earlier step
+		}
 		if e&eventBroken != 0 {
 			return fmt.Errorf("walker %d broke down at imaginary time %g: its columns are no longer finite or independent; a smaller time step may help",
 				i+1, float64(s.Step)*w.Options.TimeStep)
-		}
-		if s.Weight[i] == 0 && e&eventKilled == 0 {
-			continue // dead since an earlier step
 		}
 		s.Interval.Steps++
 		if e&eventBounded != 0 {
@@ -261,6 +261,9 @@ func (w *Walk) evaluateMoved(ws *workspace, tile [2]int, orthogonalise bool) {
 		now := w.State.Overlap[k]
 		if orthogonalise {
 			w.deviation[k] = deviation(now.Times(trial.Overlap{Log: ws.logR[i], Phase: 1}), ws.before[i])
+		}
+		if math.IsNaN(now.Log) {
+			w.events[k] |= eventBroken
 		}
 		if now.Zero() || ws.old[i].Zero() {
 			w.importance[k] = complex(math.Inf(-1), 0)

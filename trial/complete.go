@@ -85,8 +85,9 @@ type completedEnergies struct {
 }
 
 func (c completedEnergies) LocalEnergies(m *Mixed, w Walkers) {
+	w = w.Unpaired()
 	for i := range w.Count {
-		m.Energy[i] = c.localEnergy(w.Unpaired(), i, m.Overlap[i])
+		m.Energy[i] = c.localEnergy(w, i, m.Overlap[i])
 	}
 }
 

@@ -8,8 +8,8 @@ import (
 
 // Source is a trial state. Its one duty is to give overlaps; the abilities
 // below are optional. All methods may be called from several goroutines at
-// once, keep no reference to their arguments, and allocate nothing once warm.
-// A walker's results do not depend on the batch it comes in.
+// once, keep no reference to their arguments, and allocate nothing once warm
+// ([Completed] excepted). A walker's results do not depend on the batch it comes in.
 type Source interface {
 	// Sector returns the orbitals and electron numbers of the trial state.
 	Sector() hamiltonian.Sector

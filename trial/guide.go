@@ -47,8 +47,6 @@ func newGuide(h *hamiltonian.Hamiltonian, source Source, memory int64, single bo
 	able, ok := density.(EnergySource)
 	if !ok {
 		able = Complete(source)
-		g.energies = able.Energies(h, nil, memory)
-		return g, nil
 	}
 	g.energies = able.Energies(h, g.rotated, memory)
 	return g, nil
@@ -110,9 +108,10 @@ func (g *Guide) Shift(start Walkers) []float64 {
 		}
 		return shift
 	}
+	// An antisymmetric factor has no expectation value in a real state.
 	m := g.NewMixed(1)
 	g.Evaluate(m, start.Slice(0, 1))
-	copy(shift, m.Fields[:len(shift)])
+	copy(shift[:f.Symmetric()], m.Fields)
 	return shift
 }
 

@@ -2,8 +2,8 @@
 //
 // Sources: blocking, Flyvbjerg & Petersen, J. Chem. Phys. 91, 461 (1989); the
 // rule for the block length, Lee et al., Phys. Rev. E 83, 066706 (2011);
-// autocorrelation window, Wolff, Comput. Phys. Commun. 156, 143 (2004);
-// truncation rule, White, Simulation 69, 323 (1997); tail index, Hill, Ann.
+// self-consistent window, Madras & Sokal, J. Stat. Phys. 50, 109 (1988), with the
+// correction of Wolff, Comput. Phys. Commun. 156, 143 (2004); truncation rule, White, Simulation 69, 323 (1997); tail index, Hill, Ann.
 // Stat. 3, 1163 (1975) (all from memory).
 package statistics
 

@@ -9,7 +9,8 @@ import (
 
 // Spread describes a distribution and its tails.
 type Spread struct {
-	// Deviation is the standard deviation.
+	// Samples is their number, Deviation the standard deviation.
+	Samples   int
 	Deviation float64
 	// Ratio is the standard deviation over 1.4826 times the median absolute
 	// deviation: 1 for a normal distribution, larger for heavy tails.
@@ -31,7 +32,7 @@ const (
 
 // Describe returns the spread of samples, which it reorders.
 func Describe(x []float64) Spread {
-	s := Spread{Deviation: math.NaN(), Ratio: math.NaN(), Hill: math.NaN(), Largest: math.NaN()}
+	s := Spread{Samples: len(x), Deviation: math.NaN(), Ratio: math.NaN(), Hill: math.NaN(), Largest: math.NaN()}
 	if len(x) < 3 {
 		return s
 	}

@@ -34,7 +34,7 @@ func exactCommand(stderr io.Writer) *cobra.Command {
 	c := &cobra.Command{
 		Use:   "exact JOB.toml",
 		Short: "Full CI in the job's orbital space, where it fits in memory",
-		Args:  arguments(cobra.ExactArgs(1)),
+		Args:  arguments(1, 1),
 		RunE: func(c *cobra.Command, args []string) error {
 			if states < 1 {
 				return usageError{fmt.Errorf("--states is %d, expected at least 1", states)}

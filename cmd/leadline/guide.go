@@ -118,7 +118,7 @@ func readOrbitals(j *job.Job, in *inputs, h *hamiltonian.Hamiltonian) (*meanfiel
 	name := j.Trial.OrbitalsFile
 	file, _, err := in.open(name)
 	if err != nil {
-		return nil, err
+		return nil, fmt.Errorf("trial.orbitals_file: %w", err)
 	}
 	defer file.Close()
 	set, err := meanfield.ReadOrbitals(file, in.path(name))

@@ -28,14 +28,19 @@ func inspectCommand(stderr io.Writer) *cobra.Command {
 	c := &cobra.Command{
 		Use:   "inspect FILE...",
 		Short: "Say what files hold, checked as they would be on use",
-		Args:  arguments(cobra.MinimumNArgs(1)),
+		Args:  arguments(1, -1),
 		RunE: func(c *cobra.Command, args []string) error {
 			refused := 0
 			for i, name := range args {
 				if i > 0 {
 					fmt.Fprintln(c.OutOrStdout())
 				}
-				if err := inspect(c.Context(), name, c.OutOrStdout(), display{out: stderr, quiet: quiet}); err != nil {
+				var text bytes.Buffer
+				err := inspect(c.Context(), name, &text, display{out: stderr, quiet: quiet})
+				if _, failed := text.WriteTo(c.OutOrStdout()); failed != nil {
+					return failed
+				}
+				if err != nil {
 					if c.Context().Err() != nil {
 						return err
 					}

@@ -6,6 +6,9 @@ import (
 	"os"
 	"strconv"
 	"strings"
+	"time"
+
+	"leadline/hamiltonian/linalg"
 )
 
 // availableMemory returns the memory that can be used without swapping, in
@@ -40,6 +43,23 @@ func checkMemory(need int64, what string) error {
 		return fmt.Errorf("%s needs about %s of memory, this machine has %s free", what, bytesText(need), bytesText(have))
 	}
 	return nil
+}
+
+// estimatedTime guesses how long a number of flops takes on this machine, from
+// the speed of one product and the share of it that a walk reaches.
+func estimatedTime(flops float64, cores int) string {
+	const n, share, repeats = 192, 0.5, 20
+	a, b := make([]float64, n*n), make([]float64, n*n)
+	begun := time.Now()
+	for range repeats {
+		linalg.Gemm(false, false, n, n, n, 1, a, n, a, n, 0, b, n)
+	}
+	speed := 2 * n * n * n * repeats / time.Since(begun).Seconds()
+	seconds := flops / (share * speed * float64(cores))
+	if seconds < 1 {
+		return "seconds"
+	}
+	return time.Duration(seconds * float64(time.Second)).Round(time.Second).String()
 }
 
 func bytesText(n int64) string {

@@ -31,7 +31,7 @@ const (
 
 func main() {
 	blas64.Use(linalg.BLAS())
-	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM, syscall.SIGHUP)
 	// A second interrupt ends the program at once.
 	context.AfterFunc(ctx, stop)
 	os.Exit(command(ctx, os.Args[1:], os.Stdout, os.Stderr))
@@ -55,9 +55,9 @@ func command(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 		SilenceErrors: true,
 		SilenceUsage:  true,
 		Version:       version(),
-		Args: func(_ *cobra.Command, args []string) error {
+		Args: func(cmd *cobra.Command, args []string) error {
 			if len(args) > 0 {
-				return usageError{fmt.Errorf("unknown command %q", args[0])}
+				return unknownCommand(cmd, args[0])
 			}
 			return nil
 		},
@@ -91,12 +91,21 @@ func command(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 	return exitFailed
 }
 
-// arguments wraps a check of the number of arguments, so that a wrong one
-// counts as wrong usage.
-func arguments(check cobra.PositionalArgs) cobra.PositionalArgs {
+// unknownCommand is the error for a command that does not exist, with the
+// nearest one that does.
+func unknownCommand(parent *cobra.Command, name string) error {
+	text := fmt.Sprintf("unknown command %q", name)
+	if near := parent.SuggestionsFor(name); len(near) > 0 {
+		text += fmt.Sprintf("; did you mean %s?", near[0])
+	}
+	return usageError{errors.New(text)}
+}
+
+// arguments accepts from least to most arguments; most < 0 is no bound.
+func arguments(least, most int) cobra.PositionalArgs {
 	return func(cmd *cobra.Command, args []string) error {
-		if err := check(cmd, args); err != nil {
-			return usageError{err}
+		if n := len(args); n < least || (most >= 0 && n > most) {
+			return usageError{fmt.Errorf("%d arguments after %q, expected: %s", n, cmd.CommandPath(), cmd.UseLine())}
 		}
 		return nil
 	}

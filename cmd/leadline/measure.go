@@ -30,9 +30,9 @@ func measureCommand(stderr io.Writer) *cobra.Command {
 	c := &cobra.Command{
 		Use:   "measure",
 		Short: "Records of randomized measurements: simulate, check, collapse",
-		Args: func(_ *cobra.Command, args []string) error {
+		Args: func(cmd *cobra.Command, args []string) error {
 			if len(args) > 0 {
-				return usageError{fmt.Errorf("unknown command %q for measure", args[0])}
+				return unknownCommand(cmd, args[0])
 			}
 			return nil
 		},
@@ -49,7 +49,7 @@ func simulateCommand(stderr io.Writer) *cobra.Command {
 	c := &cobra.Command{
 		Use:   "simulate JOB.toml --snapshots N -o RECORD",
 		Short: "Write a record of the job's trial as a device would return it",
-		Args:  arguments(cobra.ExactArgs(1)),
+		Args:  arguments(1, 1),
 		RunE: func(c *cobra.Command, args []string) error {
 			if output == "" || snapshots < 1 {
 				return usageError{fmt.Errorf("--snapshots N (at least 1) and -o RECORD are needed")}
@@ -236,7 +236,7 @@ func checkCommand(stderr io.Writer) *cobra.Command {
 	c := &cobra.Command{
 		Use:   "check RECORD",
 		Short: "Validate a record and print its figures of merit",
-		Args:  arguments(cobra.ExactArgs(1)),
+		Args:  arguments(1, 1),
 		RunE: func(c *cobra.Command, args []string) error {
 			return checkRecord(c.Context(), args[0], jobName, asJSON, c.OutOrStdout(), stderr, display{out: stderr, quiet: quiet})
 		},
@@ -408,7 +408,7 @@ func collapseCommand(stderr io.Writer) *cobra.Command {
 		Long: "Compress a record into estimated amplitudes with their errors. Without further\n" +
 			"flags only the numbers of electrons are imposed; every projection is opt-in and\n" +
 			"reports what it removed.",
-		Args: arguments(cobra.ExactArgs(1)),
+		Args: arguments(1, 1),
 		RunE: func(c *cobra.Command, args []string) error {
 			if output == "" {
 				return usageError{fmt.Errorf("-o EXPANSION is needed")}

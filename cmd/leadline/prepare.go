@@ -25,7 +25,7 @@ func prepareCommand(stderr io.Writer) *cobra.Command {
 			"file, in canonical orbitals of the spin-pure mean field or, where the trial has an\n" +
 			"active window, in the orbitals of the window, core first. An integral file given\n" +
 			"as it is keeps its orbitals unless there is a window.",
-		Args: arguments(cobra.ExactArgs(1)),
+		Args: arguments(1, 1),
 		RunE: func(c *cobra.Command, args []string) error {
 			if output == "" {
 				return usageError{fmt.Errorf("-o FILE is needed")}

@@ -25,30 +25,30 @@ const (
 // summary is the content of summary.json and of --json; null where a thing was
 // not computed.
 type summary struct {
-	Title             string              `json:"title"`
-	Status            afqmc.Status        `json:"status"`
-	Energy            *float64            `json:"energy"`
-	Error             *float64            `json:"error"`
-	Unit              string              `json:"unit"`
-	MeanFieldEnergy   *float64            `json:"mean_field_energy"`
-	TrialEnergy       *float64            `json:"trial_energy"`
-	TrialSpinSquared  *float64            `json:"trial_spin_squared"`
-	ExactEnergy       *float64            `json:"exact_energy"`
-	ConstantEnergy    float64             `json:"constant_energy"`
-	Orbitals          int                 `json:"orbitals"`
-	Up                int                 `json:"up"`
-	Down              int                 `json:"down"`
-	Factors           int                 `json:"factors"`
-	FactorResidual    float64             `json:"factor_residual"`
-	Walkers           int                 `json:"walkers"`
-	TimeStep          float64             `json:"time_step"`
-	ImaginaryTime     float64             `json:"imaginary_time"`
-	AutocorrelationTm *float64            `json:"autocorrelation_time"`
-	Seed              int64               `json:"seed"`
-	Kernel            string              `json:"kernel"`
-	Inputs            map[string]string   `json:"inputs"`
-	Warnings          []afqmc.Warning     `json:"warnings"`
-	Figures           map[string]*float64 `json:"figures"`
+	Title               string              `json:"title"`
+	Status              afqmc.Status        `json:"status"`
+	Energy              *float64            `json:"energy"`
+	Error               *float64            `json:"error"`
+	Unit                string              `json:"unit"`
+	MeanFieldEnergy     *float64            `json:"mean_field_energy"`
+	TrialEnergy         *float64            `json:"trial_energy"`
+	TrialSpinSquared    *float64            `json:"trial_spin_squared"`
+	ExactEnergy         *float64            `json:"exact_energy"`
+	ConstantEnergy      float64             `json:"constant_energy"`
+	Orbitals            int                 `json:"orbitals"`
+	Up                  int                 `json:"up"`
+	Down                int                 `json:"down"`
+	Factors             int                 `json:"factors"`
+	FactorResidual      float64             `json:"factor_residual"`
+	Walkers             int                 `json:"walkers"`
+	TimeStep            float64             `json:"time_step"`
+	ImaginaryTime       float64             `json:"imaginary_time"`
+	AutocorrelationTime *float64            `json:"autocorrelation_time"`
+	Seed                int64               `json:"seed"`
+	Kernel              string              `json:"kernel"`
+	Inputs              map[string]string   `json:"inputs"`
+	Warnings            []afqmc.Warning     `json:"warnings"`
+	Figures             map[string]*float64 `json:"figures"`
 	// What the shot noise of a measured trial does; absent for computed trials.
 	MeasurementError    *float64   `json:"measurement_error,omitempty"`
 	EnergyHalfRecords   []float64  `json:"energy_half_records,omitempty"`
@@ -136,6 +136,33 @@ func resultDirectory(explicit, jobName string, overwrite bool) (string, error) {
 // baseName returns the name of a file without directory and extension.
 func baseName(name string) string {
 	return strings.TrimSuffix(filepath.Base(name), filepath.Ext(name))
+}
+
+// checkDirectory refuses an explicit directory that cannot take results, before
+// any work is done. It leaves nothing behind.
+func checkDirectory(explicit string, overwrite bool) error {
+	if explicit == "" {
+		return nil
+	}
+	for _, name := range []string{summaryFile, seriesFile} {
+		if _, err := os.Stat(filepath.Join(explicit, name)); err == nil && !overwrite {
+			return fmt.Errorf("%s: holds results already; choose another directory or add --overwrite", explicit)
+		}
+	}
+	_, err := os.Stat(explicit)
+	made := errors.Is(err, os.ErrNotExist)
+	if err := os.MkdirAll(explicit, 0o755); err != nil {
+		return err
+	}
+	probe, err := os.CreateTemp(explicit, ".leadline-*")
+	if err != nil {
+		return err
+	}
+	err = errorsFirst(probe.Close(), os.Remove(probe.Name()))
+	if made {
+		err = errorsFirst(err, os.Remove(explicit))
+	}
+	return err
 }
 
 // series writes series.csv row by row; it implements afqmc.Recorder.

@@ -2,8 +2,10 @@ package main
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"io"
+	"math"
 	"path/filepath"
 	"runtime"
 	"slices"
@@ -19,14 +21,15 @@ import (
 
 // runFlags are the flags of leadline run.
 type runFlags struct {
-	output    string
-	overwrite bool
-	json      bool
-	seed      int64
-	cores     int
-	quiet     bool
-	exact     bool
-	expansion string
+	output         string
+	overwrite      bool
+	json           bool
+	seed           int64
+	seeded         bool // the seed was given
+	cores          int
+	quiet          bool
+	exact          bool
+	writeExpansion string // file for the trial, an expansion
 }
 
 func runCommand(stderr io.Writer) *cobra.Command {
@@ -36,7 +39,7 @@ func runCommand(stderr io.Writer) *cobra.Command {
 		Short: "Do a whole job: Hamiltonian, trial, projection, error analysis",
 		Long: "Do a whole job: Hamiltonian, trial, projection, error analysis.\n" +
 			"Without JOB.toml an embedded example runs, about a minute on two cores.",
-		Args: arguments(cobra.MaximumNArgs(1)),
+		Args: arguments(0, 1),
 		RunE: func(c *cobra.Command, args []string) error {
 			name := ""
 			if len(args) == 1 {
@@ -48,7 +51,8 @@ func runCommand(stderr io.Writer) *cobra.Command {
 			if f.cores < 1 {
 				return usageError{fmt.Errorf("--cores is %d, expected at least 1", f.cores)}
 			}
-			return runJob(c.Context(), name, f, c.Flags().Changed("seed"), c.OutOrStdout(), stderr)
+			f.seeded = c.Flags().Changed("seed")
+			return runJob(c.Context(), name, f, c.OutOrStdout(), stderr)
 		},
 	}
 	flags := c.Flags()
@@ -56,29 +60,38 @@ func runCommand(stderr io.Writer) *cobra.Command {
 	flags.BoolVar(&f.overwrite, "overwrite", false, "replace results in the directory given by -o")
 	flags.BoolVar(&f.json, "json", false, "print the summary as one JSON object")
 	flags.Int64Var(&f.seed, "seed", 0, "random seed, in place of the job's")
-	flags.IntVar(&f.cores, "cores", runtime.GOMAXPROCS(0), "goroutines that propagate walkers")
-	flags.StringVar(&f.expansion, "write-expansion", "", "also write the trial, a CI expansion in the orbitals of the job's file, to this file")
+	flags.IntVar(&f.cores, "cores", runtime.GOMAXPROCS(0), "processor cores to use; the result does not depend on it")
+	flags.StringVar(&f.writeExpansion, "write-expansion", "", "also write the trial, a CI expansion in the orbitals of the job's file, to this file")
 	flags.BoolVar(&f.exact, "exact", false, "add the exact energy (full CI), where it fits in memory")
 	flags.BoolVar(&f.quiet, "quiet", false, "no progress on stderr")
 	return c
 }
 
 // runJob does one job and prints its result.
-func runJob(ctx context.Context, name string, f runFlags, seeded bool, stdout, stderr io.Writer) error {
+func runJob(ctx context.Context, name string, f runFlags, stdout, stderr io.Writer) error {
 	in, j, name, err := loadJob(name)
 	if err != nil {
 		return err
 	}
-	if seeded {
+	if f.seeded {
 		if err := j.Set("projection.seed", f.seed); err != nil {
 			return err
 		}
 	}
 	r := &jobRun{in: in, job: j, flags: f, name: name, shown: display{out: stderr, quiet: f.quiet}}
-	if err := r.prepare(ctx); err != nil {
+	if err := checkDirectory(f.output, f.overwrite); err != nil {
 		return err
 	}
-	if err := r.project(ctx); err != nil {
+	err = r.prepare(ctx)
+	if err == nil {
+		err = r.project(ctx)
+	}
+	if errors.Is(err, context.Canceled) && f.json && r.summary == nil {
+		// One JSON object all the same.
+		return errorsFirst(encode(stdout, &summary{Title: j.Title, Status: afqmc.StatusInterrupted, Inputs: in.hashes,
+			Warnings: []afqmc.Warning{}, Version: version()}), exitError{exitInterrupted})
+	}
+	if err != nil {
 		return err
 	}
 	if f.json {
@@ -141,11 +154,12 @@ func (r *jobRun) prepare(ctx context.Context) (err error) {
 	}
 	r.options = projection(r.job, r.flags.cores)
 	cost := afqmc.EstimateCost(h, g.guide.Support(), h.SpinFree() && g.start.Equal(), r.options)
-	r.say("the walk: about %s of memory, %.2g flops in %.2g walker-steps", bytesText(cost.Bytes), cost.Flops, float64(cost.Steps))
+	r.say("the walk: about %s of memory and %s, %.2g flops in %.2g walker-steps", bytesText(cost.Bytes),
+		estimatedTime(cost.Flops, r.options.Cores), cost.Flops, float64(cost.Steps))
 	if err := checkMemory(cost.Bytes, "the walk"); err != nil {
 		return err
 	}
-	if r.flags.expansion != "" {
+	if r.flags.writeExpansion != "" {
 		if err := r.writeExpansion(); err != nil {
 			return err
 		}
@@ -168,7 +182,7 @@ func (r *jobRun) writeExpansion() error {
 	}
 	named := *e
 	named.Basis = r.system.fingerprint(r.in)
-	return writeFile(r.flags.expansion, named.Write)
+	return writeFile(r.flags.writeExpansion, named.Write)
 }
 
 // project makes the result directory, runs the walk and writes what came out.
@@ -278,8 +292,8 @@ func (out *summary) add(r *afqmc.Result) {
 		return
 	}
 	out.Energy, out.Error = number(r.Energy.Mean), number(r.Energy.Error)
-	out.ImaginaryTime = r.Time
-	out.AutocorrelationTm = number(r.Autocorrelation)
+	out.ImaginaryTime = math.Round(r.Time*1e9) / 1e9
+	out.AutocorrelationTime = number(r.Autocorrelation)
 	out.Figures = figuresOf(r.Figures)
 }
 
@@ -326,8 +340,8 @@ func (r *jobRun) print(w io.Writer) error {
 		}
 	}
 	fmt.Fprintf(&b, "\n  phaseless AFQMC, %d walkers, time step %g, %.4g of imaginary time sampled", out.Walkers, out.TimeStep, out.ImaginaryTime)
-	if out.AutocorrelationTm != nil {
-		fmt.Fprintf(&b, "\n  (autocorrelation time %.2g)", *out.AutocorrelationTm)
+	if out.AutocorrelationTime != nil {
+		fmt.Fprintf(&b, "\n  (autocorrelation time %.2g)", *out.AutocorrelationTime)
 	}
 	fmt.Fprintf(&b, "\n  %d orbitals, %d up and %d down electrons, %d frozen orbitals, %d factors\n",
 		out.Orbitals, out.Up, out.Down, s.frozen+s.frozenBefore, out.Factors)

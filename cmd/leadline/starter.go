@@ -16,7 +16,7 @@ func initCommand(stderr io.Writer) *cobra.Command {
 	return &cobra.Command{
 		Use:   "init [NAME]",
 		Short: "Write a commented starter job, NAME.toml",
-		Args:  arguments(cobra.MaximumNArgs(1)),
+		Args:  arguments(0, 1),
 		RunE: func(c *cobra.Command, args []string) error {
 			name := "job"
 			if len(args) == 1 {
@@ -33,8 +33,8 @@ func initCommand(stderr io.Writer) *cobra.Command {
 			if err := errorsFirst(err, file.Close()); err != nil {
 				return err
 			}
-			fmt.Fprintf(c.OutOrStdout(), "wrote %s.toml; now: leadline run %s.toml\n", name, name)
-			return nil
+			_, err = fmt.Fprintf(c.OutOrStdout(), "wrote %s.toml; now: leadline run %s.toml\n", name, name)
+			return err
 		},
 	}
 }

@@ -48,7 +48,7 @@ func surveyCommand(stderr io.Writer) *cobra.Command {
 	c := &cobra.Command{
 		Use:   "survey SURVEY.toml",
 		Short: "Run a job over varied settings into one table and a plot",
-		Args:  arguments(cobra.ExactArgs(1)),
+		Args:  arguments(1, 1),
 		RunE: func(c *cobra.Command, args []string) error {
 			if f.cores < 1 {
 				return usageError{fmt.Errorf("--cores is %d, expected at least 1", f.cores)}

@@ -203,7 +203,7 @@ func (s *system) fromIntegrals(ctx context.Context, j *job.Job, in *inputs, prog
 	name := j.Hamiltonian.File
 	file, size, err := in.open(name)
 	if err != nil {
-		return err
+		return fmt.Errorf("hamiltonian.file: %w", err)
 	}
 	defer file.Close()
 	tell := progress("reading "+name, size)
@@ -231,7 +231,7 @@ func (s *system) fromPrepared(ctx context.Context, j *job.Job, in *inputs, progr
 	name := j.Hamiltonian.File
 	file, size, err := in.open(name)
 	if err != nil {
-		return err
+		return fmt.Errorf("hamiltonian.file: %w", err)
 	}
 	defer file.Close()
 	tell := progress("reading "+name, size)

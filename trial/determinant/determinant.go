@@ -91,7 +91,7 @@ func (d *Determinant) checkOrthonormal(spin int) error {
 				want = 1
 			}
 			if dev := math.Hypot(real(s)-want, imag(s)); !(dev < 1e-6) {
-				return fmt.Errorf("trial orbitals %d and %d of spin %d have overlap %.6g, expected %g to 1e-6", i+1, j+1, spin, s, want)
+				return fmt.Errorf("%s trial orbitals %d and %d have overlap %.6g, expected %g to 1e-6", [2]string{"up", "down"}[spin], i+1, j+1, s, want)
 			}
 		}
 	}
