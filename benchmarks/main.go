@@ -68,10 +68,15 @@ type growth struct {
 
 func main() {
 	asJSON := flag.Bool("json", false, "print one JSON object")
+	ci := flag.Bool("trials", false, "instead, compare CI trials with one determinant")
 	file := flag.String("prepared", "", "instead, write a synthetic prepared Hamiltonian to this file, for runs that measure memory")
 	orbitals := flag.Int("orbitals", 100, "its orbitals M, with N = M/5 electrons of each spin and 5M factors")
 	flag.Parse()
 	log.SetFlags(0)
+	if *ci {
+		trials(os.Stdout)
+		return
+	}
 	if *file != "" {
 		if err := writePrepared(*file, *orbitals); err != nil {
 			log.Fatal(err)

@@ -44,7 +44,7 @@ func inspectCommand(stderr io.Writer) *cobra.Command {
 					if c.Context().Err() != nil {
 						return err
 					}
-					fmt.Fprintf(stderr, "leadline: %v\n", err)
+					printError(stderr, err)
 					refused++
 				}
 			}
@@ -142,7 +142,7 @@ func isRecord(name string, head []byte) bool {
 		n, _ := io.ReadFull(plain, begin)
 		text = bytes.TrimSpace(begin[:n])
 	}
-	return bytes.HasPrefix(head, []byte("OVSHOT1\n")) || bytes.HasPrefix(text, []byte("{"))
+	return bytes.HasPrefix(text, []byte("OVSHOT1")) || bytes.HasPrefix(text, []byte("{"))
 }
 
 // inspectRecord reads a whole record, so that anything wrong with it is found.

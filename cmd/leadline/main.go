@@ -19,6 +19,7 @@ import (
 	"github.com/spf13/cobra"
 	"gonum.org/v1/gonum/blas/blas64"
 	"leadline/hamiltonian/linalg"
+	"leadline/trial/measured/record"
 )
 
 const (
@@ -87,8 +88,17 @@ func command(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 		fmt.Fprintln(stderr, "leadline: interrupted before any result")
 		return exitInterrupted
 	}
-	fmt.Fprintf(stderr, "leadline: %v\n", err)
+	printError(stderr, err)
 	return exitFailed
+}
+
+// printError prints one error; that of a record begins with its code.
+func printError(stderr io.Writer, err error) {
+	if record.CodeOf(err) != "" {
+		fmt.Fprintln(stderr, err)
+		return
+	}
+	fmt.Fprintf(stderr, "leadline: %v\n", err)
 }
 
 // unknownCommand is the error for a command that does not exist, with the

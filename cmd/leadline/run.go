@@ -323,6 +323,9 @@ func (r *jobRun) print(w io.Writer) error {
 	if out.WalkerSNR != nil {
 		fmt.Fprintf(&b, "  walkers      signal to shot noise %.3g on average, %.3g at the first percentile, %.2g of the weight below 3\n",
 			out.WalkerSNR.Mean, out.WalkerSNR.P01, out.WalkerSNR.Below3)
+		if e := out.WalkerSNR.LocalEnergy; e != nil {
+			fmt.Fprintf(&b, "               median error of a local energy from shot noise %.2g %s\n", *e, unit)
+		}
 	}
 	if out.MeanFieldEnergy != nil {
 		fmt.Fprintf(&b, "  mean field   %s %s (%s)\n", quoted(*out.MeanFieldEnergy, 0), unit, r.guidance.reference)

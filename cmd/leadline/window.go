@@ -178,13 +178,17 @@ func abs(n int) int {
 	return n
 }
 
+// windowTolerance is the residual left in the state of a window, small enough for
+// amplitudes that are equal by symmetry to tie when the largest are kept.
+const windowTolerance = 1e-8
+
 // solve returns the lowest state in the window with the spin of the start.
 func (w *window) solve(ctx context.Context, s *system) (*expansion.Expansion, error) {
 	determinants, bytes := exact.Estimate(w.h.Sector, 1)
 	if err := checkMemory(bytes, fmt.Sprintf("the window of %d determinants", determinants)); err != nil {
 		return nil, fmt.Errorf("trial.active: %w", err)
 	}
-	result, err := exact.Solve(ctx, w.h, exact.Options{MemoryLimit: math.MaxInt64, Spin: s.keptSpin()})
+	result, err := exact.Solve(ctx, w.h, exact.Options{MemoryLimit: math.MaxInt64, Spin: s.keptSpin(), Tolerance: windowTolerance})
 	if err != nil {
 		return nil, fmt.Errorf("trial.active: %w", err)
 	}

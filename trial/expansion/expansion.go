@@ -208,10 +208,10 @@ func (e *Expansion) Normalize() *Expansion {
 // tie is the difference between magnitudes, relative to the largest, below which
 // they count as equal: amplitudes that symmetry makes equal agree only as far as
 // a solver converged.
-const tie = 1e-8
+const tie = 1e-6
 
 // Truncate returns the n determinants of largest |amplitude|, n ≥ 1, in their
-// old order, and with them all that tie with the last to 1e-8 of the largest.
+// old order, and with them all that tie with the last to 1e-6 of the largest.
 // The norm shrinks accordingly.
 func (e *Expansion) Truncate(n int) *Expansion {
 	if n < 1 {

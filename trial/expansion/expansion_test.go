@@ -38,7 +38,7 @@ func TestNormalize(t *testing.T) {
 }
 
 func TestTruncate(t *testing.T) {
-	e := list(0.1, -0.5, 0.3i, 0.3+1e-10, -0.2, 0.3-1e-7, 0)
+	e := list(0.1, -0.5, 0.3i, 0.3+1e-10, -0.2, 0.3-1e-5, 0)
 	for _, c := range []struct {
 		n    int
 		want []complex128
@@ -46,8 +46,8 @@ func TestTruncate(t *testing.T) {
 		{1, []complex128{-0.5}},
 		{2, []complex128{-0.5, 0.3i, 0.3 + 1e-10}},
 		{3, []complex128{-0.5, 0.3i, 0.3 + 1e-10}},
-		{4, []complex128{-0.5, 0.3i, 0.3 + 1e-10, 0.3 - 1e-7}},
-		{6, []complex128{0.1, -0.5, 0.3i, 0.3 + 1e-10, -0.2, 0.3 - 1e-7}},
+		{4, []complex128{-0.5, 0.3i, 0.3 + 1e-10, 0.3 - 1e-5}},
+		{6, []complex128{0.1, -0.5, 0.3i, 0.3 + 1e-10, -0.2, 0.3 - 1e-5}},
 	} {
 		var got []complex128
 		for _, d := range e.Truncate(c.n).Determinants {
