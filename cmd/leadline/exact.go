@@ -8,6 +8,8 @@ import (
 
 	"github.com/spf13/cobra"
 
+	"leadline/cmd/leadline/job"
+	"leadline/hamiltonian"
 	"leadline/hamiltonian/exact"
 )
 
@@ -51,11 +53,13 @@ func exactCommand(stderr io.Writer) *cobra.Command {
 				return err
 			}
 			shown := display{out: stderr, quiet: quiet}
+			tighten(j)
 			s, err := newSystem(c.Context(), j, in, shown.stage)
 			if err != nil {
 				return err
 			}
-			result, err := s.exact(c.Context(), states, only, shown)
+			s.printWarnings(shown)
+			result, err := s.exact(c.Context(), states, only, false, shown)
 			if err != nil {
 				return err
 			}
@@ -72,16 +76,23 @@ func exactCommand(stderr io.Writer) *cobra.Command {
 	return c
 }
 
-// exact solves the whole orbital space. It says beforehand what it needs.
-func (s *system) exact(ctx context.Context, states int, spin *float64, shown display) (*exactResult, error) {
+// exact solves the whole orbital space, for the total spin given or, with kept,
+// for the one that the projection keeps. It says beforehand what it needs.
+func (s *system) exact(ctx context.Context, states int, spin *float64, kept bool, shown display) (*exactResult, error) {
 	h := s.hamiltonian
 	determinants, bytes := exact.Estimate(h.Sector, states)
 	need := fmt.Sprintf("full CI of %d orbitals, %d up and %d down electrons", h.Orbitals, h.Up, h.Down)
+	if h.Orbitals > 64 {
+		return nil, fmt.Errorf("full CI in %d orbitals, expected at most 64", h.Orbitals)
+	}
 	if determinants == math.MaxInt || bytes == math.MaxInt64 {
 		return nil, fmt.Errorf("%s: far too many determinants", need)
 	}
 	if err := checkMemory(bytes, fmt.Sprintf("%s (%d determinants)", need, determinants)); err != nil {
 		return nil, err
+	}
+	if kept {
+		spin = keptSpin(h)
 	}
 	say := func(format string, args ...any) {
 		if !shown.quiet {
@@ -89,10 +100,16 @@ func (s *system) exact(ctx context.Context, states int, spin *float64, shown dis
 		}
 	}
 	say("%s: %d determinants, %s of memory", need, determinants, bytesText(bytes))
+	converged := false
 	result, err := exact.Solve(ctx, h, exact.Options{
 		States: states, Spin: spin, MemoryLimit: math.MaxInt64,
 		Progress: func(iteration int, residual float64) {
-			if iteration%5 == 0 {
+			switch {
+			case converged:
+			case residual < 1e-7:
+				converged = true
+				say("  iteration %d: residual %.1e; now looking for missed states", iteration, residual)
+			case iteration%5 == 0:
 				say("  iteration %d: residual %.1e", iteration, residual)
 			}
 		},
@@ -111,12 +128,18 @@ func (s *system) exact(ctx context.Context, states int, spin *float64, shown dis
 
 // keptSpin returns the total spin that the projection keeps, nil where the
 // Hamiltonian does not conserve spin.
-func (s *system) keptSpin() *float64 {
-	if !exact.CommutesWithSpin(s.hamiltonian) {
+func keptSpin(h *hamiltonian.Hamiltonian) *float64 {
+	if !exact.CommutesWithSpin(h) {
 		return nil
 	}
-	spin := s.spin()
+	spin := 0.5 * math.Abs(float64(h.Up-h.Down))
 	return &spin
+}
+
+// tighten asks for factors as exact as numbers allow, for energies that are to be
+// compared with others.
+func tighten(j *job.Job) {
+	j.Hamiltonian.FactorTolerance = min(j.Hamiltonian.FactorTolerance, 1e-10)
 }
 
 func (r *exactResult) print(w io.Writer, title string) error {
@@ -129,7 +152,7 @@ func (r *exactResult) print(w io.Writer, title string) error {
 		if i > 0 {
 			difference = fmt.Sprintf(", %s %s above the first", quoted(state.Energy-r.States[0].Energy, 0), unit)
 		}
-		if _, err := fmt.Fprintf(w, "  state %-3d energy %s %s, <S^2> = %.4f%s\n", i+1, quoted(state.Energy, 0), unit, state.SpinSquared, difference); err != nil {
+		if _, err := fmt.Fprintf(w, "  state %-3d energy %s %s, <S^2> = %.4f%s\n", i+1, quoted(state.Energy, 0), unit, math.Abs(state.SpinSquared), difference); err != nil {
 			return err
 		}
 	}

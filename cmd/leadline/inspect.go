@@ -102,6 +102,9 @@ func firstBytes(name string) ([]byte, error) {
 	return head[:n], err
 }
 
+// inspectTolerance is the factor tolerance behind the energies that inspect shows.
+const inspectTolerance = 1e-10
+
 // inspectIntegrals reads an integral file and solves its mean fields.
 func inspectIntegrals(ctx context.Context, name string, out io.Writer, shown display) error {
 	in := &inputs{hashes: map[string]string{}}
@@ -115,14 +118,14 @@ func inspectIntegrals(ctx context.Context, name string, out io.Writer, shown dis
 	if err != nil {
 		return err
 	}
-	h, residual, err := integrals.Hamiltonian(ctx, 1e-6)
+	h, residual, err := integrals.Hamiltonian(ctx, inspectTolerance)
 	if err != nil {
 		return fmt.Errorf("%s: %w", name, err)
 	}
 	fmt.Fprintf(out, "%s: integral file\n", name)
 	fmt.Fprintf(out, "  %d orbitals, %d up and %d down electrons, constant energy %s E_h\n", h.Orbitals, h.Up, h.Down, quoted(h.Constant, 0))
 	fmt.Fprintf(out, "  %d factors, largest error on a diagonal integral %.1e E_h\n", h.Factors.Count(), residual)
-	return inspectMeanField(ctx, h, nil, out)
+	return inspectMeanField(ctx, h, nil, "hartree", out)
 }
 
 // isRecord recognises a measurement record: packed, text, or text in gzip.
@@ -194,7 +197,7 @@ func inspectPrepared(ctx context.Context, name string, out io.Writer, shown disp
 	if !h.SpinFree() {
 		return nil // restricted mean fields need factors that act alike on both spins
 	}
-	return inspectMeanField(ctx, h, nil, out)
+	return inspectMeanField(ctx, h, nil, p.Provenance.Unit, out)
 }
 
 // inspectExpansion reads an expansion and describes it.
@@ -228,7 +231,10 @@ func inspectExpansion(name string, out io.Writer) error {
 
 // inspectMeanField prints energies, spin and orbital energies of the mean fields
 // and, of a molecule, the dipole moment.
-func inspectMeanField(ctx context.Context, h *hamiltonian.Hamiltonian, m *molecule.Result, out io.Writer) error {
+func inspectMeanField(ctx context.Context, h *hamiltonian.Hamiltonian, m *molecule.Result, unit string, out io.Writer) error {
+	if unit == "" {
+		unit = "hartree"
+	}
 	options := meanfield.Options{}
 	if m != nil {
 		options.Guess = m.Density
@@ -242,7 +248,7 @@ func inspectMeanField(ctx context.Context, h *hamiltonian.Hamiltonian, m *molecu
 		if err != nil {
 			return fmt.Errorf("%v: %w", kind, err)
 		}
-		fmt.Fprintf(out, "\n  %-4s energy %s E_h, <S^2> = %.4f, %d iterations\n", strings.ToUpper(kind.String()), quoted(s.Energy, 0), s.SpinSquared, s.Iterations)
+		fmt.Fprintf(out, "\n  %-4s energy %s %s, <S^2> = %.4f, %d iterations\n", strings.ToUpper(kind.String()), quoted(s.Energy, 0), symbol(unit), math.Abs(s.SpinSquared), s.Iterations)
 		for _, note := range s.Notes {
 			fmt.Fprintf(out, "    note: %s\n", note)
 		}
@@ -251,7 +257,7 @@ func inspectMeanField(ctx context.Context, h *hamiltonian.Hamiltonian, m *molecu
 			size := math.Sqrt(d[0]*d[0] + d[1]*d[1] + d[2]*d[2])
 			fmt.Fprintf(out, "    dipole moment (%s, %s, %s) e·bohr about the origin, %.4f debye\n", fixed(d[0]), fixed(d[1]), fixed(d[2]), size*debye)
 		}
-		printOrbitalEnergies(out, s)
+		printOrbitalEnergies(out, s, symbol(unit))
 	}
 	return nil
 }
@@ -281,7 +287,7 @@ func dipole(m *molecule.Result, s *meanfield.Solution) [3]float64 {
 	return d
 }
 
-func printOrbitalEnergies(out io.Writer, s *meanfield.Solution) {
+func printOrbitalEnergies(out io.Writer, s *meanfield.Solution, unit string) {
 	spins := []int{hamiltonian.Up, hamiltonian.Down}
 	if s.Kind != meanfield.UHF {
 		spins = spins[:1]
@@ -291,13 +297,13 @@ func printOrbitalEnergies(out io.Writer, s *meanfield.Solution) {
 		if s.Kind == meanfield.UHF {
 			label = [2]string{" up", " down"}[spin]
 		}
-		fmt.Fprintf(out, "    orbital energies%s, E_h (occupied | empty)\n", label)
+		fmt.Fprintf(out, "    orbital energies%s, %s (occupied | empty)\n", label, unit)
 		occupied := s.Sector.Electrons(spin)
 		for i, e := range s.OrbitalEnergies[spin] {
-			switch {
-			case i%8 == 0:
+			if i%8 == 0 {
 				fmt.Fprintf(out, "     ")
-			case i == occupied:
+			}
+			if i == occupied {
 				fmt.Fprintf(out, " |")
 			}
 			fmt.Fprintf(out, " %10s", minus(fmt.Sprintf("%.5f", e)))
@@ -315,12 +321,29 @@ func inspectJob(ctx context.Context, name string, out io.Writer, shown display) 
 	if err != nil {
 		return err
 	}
-	fmt.Fprintf(out, "%s: job, as resolved\n\n", name)
-	if err := j.Write(out); err != nil || j.Hamiltonian.Source != "molecule" {
+	// As on use: the Hamiltonian with its core frozen, and every file of the trial.
+	tight := *j
+	tighten(&tight)
+	whole, err := newSystem(ctx, &tight, in, shown.stage)
+	if err != nil {
 		return err
 	}
-	s := &system{}
-	if err := s.fromMolecule(ctx, j, in, shown.stage); err != nil {
+	for _, file := range j.Files() {
+		if _, err := os.Stat(in.path(file.Value.(string))); err != nil {
+			return fmt.Errorf("%s: %w", file.Key, err)
+		}
+	}
+	fmt.Fprintf(out, "%s: job, as resolved\n\n", name)
+	if err := j.Write(out); err != nil {
+		return err
+	}
+	if j.Hamiltonian.Source != "molecule" {
+		h := whole.hamiltonian
+		fmt.Fprintf(out, "\n%d orbitals, %d up and %d down electrons, %d factors\n", h.Orbitals, h.Up, h.Down, h.Factors.Count())
+		return inspectMeanField(ctx, whole.spinFree, nil, whole.unit, out)
+	}
+	s := &system{unit: "hartree"}
+	if err := s.fromMolecule(ctx, &tight, in, shown.stage); err != nil {
 		return err
 	}
 	h := s.hamiltonian
@@ -329,7 +352,7 @@ func inspectJob(ctx context.Context, name string, out io.Writer, shown display) 
 	for _, w := range s.warnings {
 		fmt.Fprintf(out, "  %-8s %s: %s\n", w.Level, w.Check, w.Text)
 	}
-	return inspectMeanField(ctx, h, s.molecule, out)
+	return inspectMeanField(ctx, h, s.molecule, s.unit, out)
 }
 
 // inspectResults prints the summary of a directory of results.

@@ -16,10 +16,11 @@ import (
 	"os/signal"
 	"syscall"
 
-	"github.com/spf13/cobra"
-	"gonum.org/v1/gonum/blas/blas64"
 	"leadline/hamiltonian/linalg"
 	"leadline/trial/measured/record"
+
+	"github.com/spf13/cobra"
+	"gonum.org/v1/gonum/blas/blas64"
 )
 
 const (

@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"path/filepath"
 
 	"github.com/spf13/cobra"
 	"gonum.org/v1/gonum/mat"
@@ -35,6 +36,9 @@ func prepareCommand(stderr io.Writer) *cobra.Command {
 					return err
 				}
 			}
+			if expansionFile != "" && filepath.Clean(expansionFile) == filepath.Clean(output) {
+				return usageError{fmt.Errorf("-o and --expansion name the same file, %s", output)}
+			}
 			return prepare(c.Context(), args[0], output, expansionFile, integrals, c.OutOrStdout(), display{out: stderr, quiet: quiet})
 		},
 	}
@@ -55,6 +59,7 @@ func prepare(ctx context.Context, name, output, expansionFile string, integrals 
 	if err != nil {
 		return err
 	}
+	s.printWarnings(shown)
 	var e *expansion.Expansion
 	if j.Trial.Kind != "determinant" && j.Trial.Active != (job.Space{}) {
 		g := &guidance{}

@@ -82,6 +82,11 @@ func runJob(ctx context.Context, name string, f runFlags, stdout, stderr io.Writ
 	if err := checkDirectory(f.output, f.overwrite); err != nil {
 		return err
 	}
+	if f.writeExpansion != "" {
+		if err := mayWrite(f.writeExpansion, f.overwrite); err != nil {
+			return err
+		}
+	}
 	err = r.prepare(ctx)
 	if err == nil {
 		err = r.project(ctx)
@@ -165,7 +170,7 @@ func (r *jobRun) prepare(ctx context.Context) (err error) {
 		}
 	}
 	if r.flags.exact {
-		r.exact, err = s.exact(ctx, 1, s.keptSpin(), r.shown)
+		r.exact, err = s.exact(ctx, 1, nil, true, r.shown)
 	}
 	return err
 }
@@ -221,6 +226,9 @@ func (r *jobRun) project(ctx context.Context) (err error) {
 	}
 	out.add(result)
 	out.Warnings = slices.Concat([]afqmc.Warning{}, r.system.warnings, r.guidance.warnings, out.Warnings)
+	if w, ok := exactDeviation(out); ok {
+		out.Warnings = append(out.Warnings, w)
+	}
 	if err := writeSummary(r.dir, out); err != nil || r.guidance.measured == nil || !result.Sampled || result.Status == afqmc.StatusInterrupted {
 		return err
 	}
@@ -229,6 +237,20 @@ func (r *jobRun) project(ctx context.Context) (err error) {
 	}
 	out.WallSeconds = time.Since(r.begun).Seconds()
 	return writeSummary(r.dir, out)
+}
+
+// exactDeviation warns where an energy lies further from the exact one than its
+// statistical error explains: the bias of constraint and time step.
+func exactDeviation(out *summary) (afqmc.Warning, bool) {
+	if out.ExactEnergy == nil || out.Energy == nil || out.Error == nil {
+		return afqmc.Warning{}, false
+	}
+	d := *out.Energy - *out.ExactEnergy
+	if math.Abs(d) <= 3**out.Error+1e-6 {
+		return afqmc.Warning{}, false
+	}
+	return afqmc.Warning{Check: "exact_deviation", Level: afqmc.Caution, Figure: d,
+		Text: fmt.Sprintf("the energy lies %s from the exact one: more than its statistical error, so it is bias", quoted(d, *out.Error))}, true
 }
 
 // projection returns the options of the walk.
@@ -331,7 +353,7 @@ func (r *jobRun) print(w io.Writer) error {
 		fmt.Fprintf(&b, "  mean field   %s %s (%s)\n", quoted(*out.MeanFieldEnergy, 0), unit, r.guidance.reference)
 	}
 	if out.TrialEnergy != nil {
-		fmt.Fprintf(&b, "  trial        %s %s, <S^2> = %.4f\n", quoted(*out.TrialEnergy, 0), unit, *out.TrialSpinSquared)
+		fmt.Fprintf(&b, "  trial        %s %s, <S^2> = %.4f\n", quoted(*out.TrialEnergy, 0), unit, math.Abs(*out.TrialSpinSquared))
 	}
 	if out.Energy != nil && out.MeanFieldEnergy != nil && out.Unit == "hartree" {
 		fmt.Fprintf(&b, "  correlation  %s\n", differenceText(*out.Energy-*out.MeanFieldEnergy, out.Error))

@@ -37,7 +37,9 @@ type point struct {
 	Error            *float64        `json:"error"`
 	ExactEnergy      *float64        `json:"exact_energy"`
 	Deviation        *float64        `json:"deviation"`
+	Unit             string          `json:"unit"`
 	Status           afqmc.Status    `json:"status"`
+	Failure          string          `json:"failure,omitempty"`
 	Level            afqmc.Level     `json:"level"`
 	Warnings         []afqmc.Warning `json:"warnings"`
 	settings, values []string
@@ -84,7 +86,7 @@ func runSurvey(ctx context.Context, name string, f runFlags, stdout, stderr io.W
 	settings := survey.Points()
 	jobs := make([]*job.Job, len(settings))
 	for i := range settings {
-		if jobs[i], err = first.With(settings[i]...); err != nil {
+		if jobs[i], err = first.Vary(settings[i]...); err != nil {
 			return err
 		}
 	}
@@ -106,7 +108,12 @@ func runSurvey(ctx context.Context, name string, f runFlags, stdout, stderr io.W
 			fmt.Fprintf(stderr, "point %d of %d: %s\n", i+1, len(jobs), strings.Join(words, ", "))
 		}
 		if err := p.run(ctx, j, jobName, dir, f, known, stderr); err != nil {
-			return fmt.Errorf("point %d (%s): %w", i+1, strings.Join(words, ", "), err)
+			if ctx.Err() != nil {
+				return err
+			}
+			// The others may still succeed.
+			p.Status, p.Failure = "failed", err.Error()
+			fmt.Fprintf(stderr, "leadline: point %d (%s): %v\n", i+1, strings.Join(words, ", "), err)
 		}
 		points = append(points, p)
 		if err := writeSurvey(dir, points); err != nil {
@@ -127,10 +134,17 @@ func runSurvey(ctx context.Context, name string, f runFlags, stdout, stderr io.W
 	case last.Status == afqmc.StatusInterrupted:
 		return exitError{exitInterrupted}
 	}
+	code := exitDone
 	for _, p := range points {
-		if p.Level == afqmc.Stop {
-			return exitError{exitDoubtful}
+		switch {
+		case p.Failure != "":
+			return exitError{exitFailed}
+		case p.Level == afqmc.Stop:
+			code = exitDoubtful
 		}
+	}
+	if code != exitDone {
+		return exitError{code}
 	}
 	return nil
 }
@@ -160,10 +174,11 @@ func (p *point) run(ctx context.Context, j *job.Job, jobName, dir string, f runF
 	if wantExact {
 		key := fmt.Sprintf("%+v", j.Hamiltonian)
 		if known[key] == nil {
-			result, err := r.system.exact(ctx, 1, r.system.keptSpin(), r.shown)
+			result, err := r.system.exact(ctx, 1, nil, true, r.shown)
 			if err != nil {
 				return err
 			}
+			clear(known) // one exact state at a time
 			known[key] = result
 		}
 		r.exact = known[key]
@@ -174,6 +189,7 @@ func (p *point) run(ctx context.Context, j *job.Job, jobName, dir string, f runF
 	}
 	s := r.summary
 	p.TrialEnergy, p.Energy, p.Error, p.ExactEnergy = s.TrialEnergy, s.Energy, s.Error, s.ExactEnergy
+	p.Unit = s.Unit
 	p.Status, p.Level, p.Warnings = s.Status, worst(s.Warnings), s.Warnings
 	if p.Energy != nil && p.ExactEnergy != nil {
 		p.Deviation = number(*p.Energy - *p.ExactEnergy)
@@ -229,7 +245,7 @@ func writeSurvey(dir string, points []*point) error {
 	}
 	err = writeFile(filepath.Join(dir, tableFile), func(w io.Writer) error {
 		table := csv.NewWriter(w)
-		table.Write(append(append([]string{}, points[0].settings...), "trial_energy", "trial_infidelity", "energy", "error", "exact_energy", "deviation", "level", "directory"))
+		table.Write(append(append([]string{}, points[0].settings...), "trial_energy", "trial_infidelity", "energy", "error", "exact_energy", "deviation", "unit", "status", "level", "directory"))
 		for _, p := range points {
 			row := append([]string{}, p.values...)
 			for _, v := range []*float64{p.TrialEnergy, p.TrialInfidelity, p.Energy, p.Error, p.ExactEnergy, p.Deviation} {
@@ -239,7 +255,7 @@ func writeSurvey(dir string, points []*point) error {
 				}
 				row = append(row, field)
 			}
-			table.Write(append(row, string(p.Level), p.Directory))
+			table.Write(append(row, p.Unit, string(p.Status), string(p.Level), p.Directory))
 		}
 		table.Flush()
 		return table.Error()
@@ -271,7 +287,10 @@ func printSurvey(w io.Writer, title string, points []*point, dir string) error {
 			}
 		}
 		level := string(p.Level)
-		if level == "" {
+		switch {
+		case p.Failure != "":
+			level = "failed"
+		case level == "":
 			level = "none"
 		}
 		fmt.Fprintf(table, "  %s\t%s\t%s\t%s\t%s\t%s\n", strings.Join(p.values, "\t"), text(p.TrialEnergy, "%.6f"),
@@ -279,6 +298,12 @@ func printSurvey(w io.Writer, title string, points []*point, dir string) error {
 	}
 	if err := table.Flush(); err != nil {
 		return err
+	}
+	for _, p := range points {
+		if p.Unit != "" {
+			fmt.Fprintf(w, "\n  energies in %s, one standard error in the last digits\n", symbol(p.Unit))
+			break
+		}
 	}
 	_, err := fmt.Fprintf(w, "\n  table, plot and the results of each point in %s\n", filepath.ToSlash(dir))
 	return err

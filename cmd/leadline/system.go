@@ -3,7 +3,6 @@ package main
 import (
 	"context"
 	"fmt"
-	"math"
 
 	"gonum.org/v1/gonum/mat"
 
@@ -52,6 +51,9 @@ type start struct {
 	// orbitals holds all orbitals, M×M, or is nil where only the occupied ones
 	// are known.
 	orbitals *mat.Dense
+	// external is the Hessian's lowest eigenvalue towards UHF, zero where it is not
+	// known.
+	external float64
 }
 
 // progressFunc starts a display of one stage; the function that it returns is
@@ -89,7 +91,7 @@ func newSystem(ctx context.Context, j *job.Job, in *inputs, progress progressFun
 		var whole *meanfield.Solution
 		s.hamiltonian, whole, err = meanfield.FrozenCore(ctx, s.hamiltonian, s.frozen, options)
 		if err != nil {
-			return nil, fmt.Errorf("frozen core: %w", err)
+			return nil, fmt.Errorf("%s: hamiltonian.frozen_core: %w", j.Where("hamiltonian.frozen_core"), err)
 		}
 		if s.coefficients != nil {
 			m := s.hamiltonian.Orbitals + s.frozen
@@ -115,6 +117,7 @@ func newSystem(ctx context.Context, j *job.Job, in *inputs, progress progressFun
 		spinSquared: solution.SpinSquared,
 		occupied:    occupied(solution),
 		orbitals:    solution.Orbitals[hamiltonian.Up],
+		external:    solution.External,
 	}
 	if s.molecule != nil {
 		s.rotate(s.start.orbitals)
@@ -156,9 +159,11 @@ func product(a, b mat.Matrix) *mat.Dense {
 	return &out
 }
 
-// spin returns the total spin S of the start, which the projection keeps.
-func (s *system) spin() float64 {
-	return 0.5 * math.Abs(float64(s.hamiltonian.Up-s.hamiltonian.Down))
+// printWarnings shows what the Hamiltonian is to be doubted for.
+func (s *system) printWarnings(shown display) {
+	for _, w := range s.warnings {
+		fmt.Fprintf(shown.out, "%s %s: %s\n", w.Level, w.Check, w.Text)
+	}
 }
 
 // fingerprint returns the hash of the file that fixes the orbitals, empty where
@@ -287,7 +292,7 @@ func (s *system) fromMolecule(ctx context.Context, j *job.Job, in *inputs, progr
 		},
 	})
 	if err != nil {
-		return err
+		return fmt.Errorf("%s: %w", j.Where("hamiltonian"), err)
 	}
 	s.hamiltonian, s.residual, s.guess = s.molecule.Hamiltonian, s.molecule.Residual, s.molecule.Density
 	s.coefficients = s.molecule.Orbitals
@@ -296,7 +301,12 @@ func (s *system) fromMolecule(ctx context.Context, j *job.Job, in *inputs, progr
 	}
 	s.frozen = int(j.Hamiltonian.FrozenCore)
 	if j.Hamiltonian.FrozenCore == job.AutoCore {
-		s.frozen = geometry.CoreOrbitals()
+		// An ion may have fewer electrons than its atoms' cores.
+		up, down := s.hamiltonian.Up, s.hamiltonian.Down
+		s.frozen = min(geometry.CoreOrbitals(), up, down)
+		if s.frozen > 0 && 2*s.frozen == up+down {
+			s.frozen--
+		}
 	}
 	return nil
 }
@@ -318,7 +328,7 @@ func readGeometry(j *job.Job, in *inputs) (molecule.Geometry, error) {
 	for i, a := range j.Hamiltonian.Atoms {
 		atom, err := molecule.NewAtom(a.Symbol, a.X, unit)
 		if err != nil {
-			return nil, fmt.Errorf("hamiltonian.atoms: atom %d: %w", i+1, err)
+			return nil, fmt.Errorf("%s: hamiltonian.atoms: atom %d: %w", j.Where(fmt.Sprintf("hamiltonian.atoms[%d]", i)), i+1, err)
 		}
 		g = append(g, atom)
 	}
@@ -327,12 +337,24 @@ func readGeometry(j *job.Job, in *inputs) (molecule.Geometry, error) {
 
 func readBasis(j *job.Job, in *inputs) (*basis.Set, error) {
 	if j.Hamiltonian.BasisFile == "" {
-		return basis.Named(j.Hamiltonian.Basis)
+		set, err := basis.Named(j.Hamiltonian.Basis)
+		if err != nil {
+			return nil, fmt.Errorf("%s: hamiltonian.basis: %w", j.Where("hamiltonian.basis"), err)
+		}
+		return set, nil
 	}
 	file, _, err := in.open(j.Hamiltonian.BasisFile)
 	if err != nil {
 		return nil, err
 	}
 	defer file.Close()
-	return basis.Read(file, in.path(j.Hamiltonian.BasisFile))
+	set, err := basis.Read(file, in.path(j.Hamiltonian.BasisFile))
+	if err != nil || j.Hamiltonian.Basis == "" {
+		return set, err
+	}
+	below, err := basis.Named(j.Hamiltonian.Basis)
+	if err != nil {
+		return nil, fmt.Errorf("%s: %w", j.Where("hamiltonian.basis"), err)
+	}
+	return set.Over(below), nil
 }

@@ -104,7 +104,10 @@ func newWindow(ctx context.Context, space job.Space, kind string, s *system, ref
 	h := s.hamiltonian
 	w = &window{active: space.Orbitals}
 	outside := h.Up + h.Down - space.Electrons
-	if outside < 0 || outside%2 != 0 {
+	if outside < 0 {
+		return nil, fmt.Errorf("trial.active: %d electrons in the window, expected at most %d", space.Electrons, h.Up+h.Down)
+	}
+	if outside%2 != 0 {
 		return nil, fmt.Errorf("trial.active: %d electrons in the window leave %d of %d outside, expected an even number of them", space.Electrons, outside, h.Up+h.Down)
 	}
 	w.core = outside / 2
@@ -188,7 +191,7 @@ func (w *window) solve(ctx context.Context, s *system) (*expansion.Expansion, er
 	if err := checkMemory(bytes, fmt.Sprintf("the window of %d determinants", determinants)); err != nil {
 		return nil, fmt.Errorf("trial.active: %w", err)
 	}
-	result, err := exact.Solve(ctx, w.h, exact.Options{MemoryLimit: math.MaxInt64, Spin: s.keptSpin(), Tolerance: windowTolerance})
+	result, err := exact.Solve(ctx, w.h, exact.Options{MemoryLimit: math.MaxInt64, Spin: keptSpin(w.h), Tolerance: windowTolerance})
 	if err != nil {
 		return nil, fmt.Errorf("trial.active: %w", err)
 	}

@@ -3,6 +3,7 @@ package basis
 import (
 	"embed"
 	"fmt"
+	"maps"
 	"strings"
 )
 
@@ -30,6 +31,13 @@ type Set struct {
 	Name        string
 	Publication string
 	shells      map[int][]Shell
+}
+
+// Over returns a set that takes elements from s and those that s lacks from below.
+func (s *Set) Over(below *Set) *Set {
+	out := &Set{Name: s.Name + " over " + below.Name, Publication: s.Publication + "; " + below.Publication, shells: maps.Clone(below.shells)}
+	maps.Copy(out.shells, s.shells)
+	return out
 }
 
 // Shells returns the shells of the element with atomic number z, which the

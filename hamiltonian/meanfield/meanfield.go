@@ -98,6 +98,10 @@ type Solution struct {
 	// hartree (+Inf where there is nothing to rotate).
 	Stable            bool
 	HessianEigenvalue float64
+	// External is the lowest eigenvalue of the Hessian of rotations that make up
+	// and down orbitals differ, in hartree: negative where RHF or ROHF is unstable
+	// towards UHF; +Inf for UHF.
+	External float64
 	// GradientNorm is the Euclidean norm of the orbital gradient, in hartree.
 	GradientNorm float64
 	// Notes are sentences for the user.
@@ -270,12 +274,14 @@ func (s *search) solution() (*Solution, error) {
 	if s.missed < pt.energy-sameEnergy {
 		out.Notes = append(out.Notes, fmt.Sprintf("%s: a start that did not converge reached %.8f, below the solution kept: a lower one exists", s.kind, s.missed))
 	}
+	out.External = math.Inf(1)
 	if s.kind != UHF {
 		outer := newProblem(s.h, UHF)
 		mode, _, err := outer.lowestMode(s.ctx, outer.canonical(pt))
 		if err != nil {
 			return nil, err
 		}
+		out.External = mode
 		if mode < -unstable {
 			out.Notes = append(out.Notes, fmt.Sprintf("%s: unstable towards different orbitals for up and down electrons (Hessian eigenvalue %.4f): a lower uhf solution exists", s.kind, mode))
 		}

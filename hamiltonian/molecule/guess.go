@@ -198,6 +198,9 @@ func (a *atom) fill(fock *mat.SymDense) (*mat.Dense, error) {
 			}
 		}
 	}
+	if len(columns) == 0 {
+		return nil, fmt.Errorf("the basis has none of the s to f functions that the atom's electrons fill first")
+	}
 	return mat.DenseCopyOf(mat.NewDense(len(columns)/a.n, a.n, columns).T()), nil
 }
 

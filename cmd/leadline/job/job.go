@@ -42,7 +42,7 @@ type Hamiltonian struct {
 	Coupling float64 `toml:"coupling" when:"source=pairing" need:"yes" doc:"attractive where positive"`
 	Pairs    int     `toml:"pairs" when:"source=pairing" need:"yes" least:"1" most:"1000"`
 
-	FactorTolerance float64 `toml:"factor_tolerance" when:"source=molecule|integrals" default:"1e-6" above:"0" most:"0.1" doc:"hartree"`
+	FactorTolerance float64 `toml:"factor_tolerance" when:"source=molecule|integrals" default:"1e-9" above:"0" most:"0.1" doc:"hartree"`
 }
 
 // Atom is one nucleus, its place in the unit of the job.

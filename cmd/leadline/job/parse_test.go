@@ -38,13 +38,13 @@ func TestDefaults(t *testing.T) {
 		text string
 		want Job
 	}{
-		{molecule, Job{Hamiltonian: Hamiltonian{Source: "molecule", Unit: "bohr", Basis: "sto-3g", FactorTolerance: 1e-6,
+		{molecule, Job{Hamiltonian: Hamiltonian{Source: "molecule", Unit: "bohr", Basis: "sto-3g", FactorTolerance: 1e-9,
 			Atoms: []Atom{{"H", [3]float64{}}, {"H", [3]float64{0, 0, 1.4}}}}, Trial: uhf}},
 		{"[hamiltonian]\nsource = 'molecule'\nxyz = 'a.xyz'\nbasis_file = 'b.gbs'\nfrozen_core = 'auto'\n",
 			Job{Hamiltonian: Hamiltonian{Source: "molecule", Unit: "angstrom", XYZ: "a.xyz", BasisFile: "b.gbs",
-				FrozenCore: AutoCore, FactorTolerance: 1e-6}, Trial: uhf}},
+				FrozenCore: AutoCore, FactorTolerance: 1e-9}, Trial: uhf}},
 		{"title = 'N2'\n[hamiltonian]\nsource = 'integrals'\nfile = 'n2.fcidump'\n[projection]\ncap = false\ntarget_error = 1e-3",
-			Job{Title: "N2", Hamiltonian: Hamiltonian{Source: "integrals", File: "n2.fcidump", FactorTolerance: 1e-6}, Trial: uhf}},
+			Job{Title: "N2", Hamiltonian: Hamiltonian{Source: "integrals", File: "n2.fcidump", FactorTolerance: 1e-9}, Trial: uhf}},
 		{"[hamiltonian]\nsource = 'prepared'\nfile = 'n2'\n[trial]\nkind = 'measured'\nrecord = 'r'\nspin = 0\nforeign_basis = true",
 			Job{Hamiltonian: Hamiltonian{Source: "prepared", File: "n2"},
 				Trial: Trial{Kind: "measured", Orbitals: "uhf", Record: "r", Spin: pointer(0.0), ForeignBasis: true}}},

@@ -22,7 +22,13 @@ func (s Setting) String() string { return s.Key + " = " + literal(plainValue(s.V
 // default. Of two keys that exclude each other (atoms and xyz; active and file) the
 // one set takes the place of the other; a key of j that no longer applies, because
 // another source or kind is set, is dropped. The error is of type [Problems].
-func (j *Job) With(settings ...Setting) (*Job, error) {
+func (j *Job) With(settings ...Setting) (*Job, error) { return j.with(true, settings) }
+
+// Vary is [Job.With] for the points of a survey: a setting that plays no part
+// under the source or kind of its point is left out, as a key of j is.
+func (j *Job) Vary(settings ...Setting) (*Job, error) { return j.with(false, settings) }
+
+func (j *Job) with(firm bool, settings []Setting) (*Job, error) {
 	doc := &document{name: "job", values: j.values(), lines: make(map[string]int), loose: true, firm: make(map[string]bool)}
 	if j.origin != nil {
 		doc.name = j.origin.name
@@ -43,7 +49,7 @@ func (j *Job) With(settings ...Setting) (*Job, error) {
 			r.add(s.Key, "unknown key%s", suggestion(s.Key))
 		case s.Value != nil:
 			doc.values[s.Key] = plainValue(s.Value)
-			doc.firm[s.Key] = true
+			doc.firm[s.Key] = firm
 		}
 	}
 	return doc.resolve(r)
