@@ -127,6 +127,7 @@ func writePrepared(name string, m int) error {
 
 // products times the product of square matrices on one thread beside gonum's.
 func (r *report) products() {
+	defer runtime.GOMAXPROCS(runtime.GOMAXPROCS(1)) // gonum's product takes every core it gets
 	for _, n := range []int{64, 256, 512, 1024} {
 		a, b, c := matrix(n), matrix(n), make([]float64, n*n)
 		a32, b32, c32 := make([]float32, n*n), make([]float32, n*n), make([]float32, n*n)
