@@ -105,7 +105,9 @@ func diagnose(w *Walk, r *Result) []Warning {
 			"local energies have a heavy tail (exponent %.2g): the error bar is soft above 2 and meaningless below; a better trial is needed", f.Local.Hill)
 		add("energy_spread", limitRatio.grade(f.Local.Ratio), f.Local.Ratio,
 			"local energies spread %.2g times wider than their core: heavy tail, a longer run than the error suggests is needed", f.Local.Ratio)
-		limit := max(100, 2*math.Cbrt(float64(f.Local.Samples)))
+		// The largest of n samples with tail exponent α grows like n^(1/α); α = 2.5
+		// is where the tail itself is cautioned.
+		limit := max(100, math.Pow(float64(f.Local.Samples), 1/limitHill.warn))
 		add("largest_energy", threshold{ok: limit, warn: limit, fail: limit, failed: Caution}.grade(f.Local.Largest), f.Local.Largest,
 			"one local energy lies %.3g standard deviations away: the trial may have nodes where the state has none", f.Local.Largest)
 	}

@@ -46,9 +46,11 @@ func checkMemory(need int64, what string) error {
 }
 
 // estimatedTime guesses how long a number of flops takes on this machine, from
-// the speed of one product and the share of it that a walk reaches.
-func estimatedTime(flops float64, cores int) string {
-	const n, share, repeats = 192, 0.5, 20
+// the speed of one product and the share of it that a walk in so many orbitals
+// reaches (measured from 12 to 100 orbitals).
+func estimatedTime(flops float64, orbitals, cores int) string {
+	const n, repeats = 192, 20
+	share := 0.7 * float64(orbitals) / float64(orbitals+30)
 	a, b := make([]float64, n*n), make([]float64, n*n)
 	begun := time.Now()
 	for range repeats {

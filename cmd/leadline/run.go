@@ -160,7 +160,7 @@ func (r *jobRun) prepare(ctx context.Context) (err error) {
 	r.options = projection(r.job, r.flags.cores)
 	cost := afqmc.EstimateCost(h, g.guide.Support(), h.SpinFree() && g.start.Equal(), r.options)
 	r.say("the walk: about %s of memory and %s, %.2g flops in %.2g walker-steps", bytesText(cost.Bytes),
-		estimatedTime(cost.Flops, r.options.Cores), cost.Flops, float64(cost.Steps))
+		estimatedTime(cost.Flops, h.Orbitals, r.options.Cores), cost.Flops, float64(cost.Steps))
 	if err := checkMemory(cost.Bytes, "the walk"); err != nil {
 		return err
 	}
