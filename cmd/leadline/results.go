@@ -118,19 +118,29 @@ func resultDirectory(explicit, jobName string, overwrite bool) (string, error) {
 			}
 		}
 	}
-	for _, name := range []string{summaryFile, seriesFile} {
-		path := filepath.Join(explicit, name)
-		if _, err := os.Stat(path); err != nil {
-			continue
-		}
-		if !overwrite {
-			return "", fmt.Errorf("%s: holds results already; choose another directory or add --overwrite", explicit)
-		}
-		if err := os.Remove(path); err != nil {
+	if err := refuseResults(explicit, overwrite); err != nil {
+		return "", err
+	}
+	for _, name := range resultFiles {
+		if err := os.Remove(filepath.Join(explicit, name)); err != nil && !errors.Is(err, os.ErrNotExist) {
 			return "", err
 		}
 	}
 	return explicit, os.MkdirAll(explicit, 0o755)
+}
+
+// resultFiles are what makes a directory one that holds results.
+var resultFiles = []string{summaryFile, seriesFile}
+
+// refuseResults refuses a directory that holds results unless they may be
+// overwritten.
+func refuseResults(dir string, overwrite bool) error {
+	for _, name := range resultFiles {
+		if _, err := os.Stat(filepath.Join(dir, name)); err == nil && !overwrite {
+			return fmt.Errorf("%s: holds results already; choose another directory or add --overwrite", dir)
+		}
+	}
+	return nil
 }
 
 // baseName returns the name of a file without directory and extension.
@@ -144,13 +154,16 @@ func checkDirectory(explicit string, overwrite bool) error {
 	if explicit == "" {
 		return nil
 	}
-	for _, name := range []string{summaryFile, seriesFile} {
-		if _, err := os.Stat(filepath.Join(explicit, name)); err == nil && !overwrite {
-			return fmt.Errorf("%s: holds results already; choose another directory or add --overwrite", explicit)
-		}
+	if err := refuseResults(explicit, overwrite); err != nil {
+		return err
 	}
-	_, err := os.Stat(explicit)
-	made := errors.Is(err, os.ErrNotExist)
+	var made []string // innermost first
+	for dir := filepath.Clean(explicit); ; dir = filepath.Dir(dir) {
+		if _, err := os.Stat(dir); !errors.Is(err, os.ErrNotExist) {
+			break
+		}
+		made = append(made, dir)
+	}
 	if err := os.MkdirAll(explicit, 0o755); err != nil {
 		return err
 	}
@@ -159,8 +172,8 @@ func checkDirectory(explicit string, overwrite bool) error {
 		return err
 	}
 	err = errorsFirst(probe.Close(), os.Remove(probe.Name()))
-	if made {
-		err = errorsFirst(err, os.Remove(explicit))
+	for _, dir := range made {
+		err = errorsFirst(err, os.Remove(dir))
 	}
 	return err
 }
