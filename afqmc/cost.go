@@ -57,7 +57,7 @@ func EstimateCost(h *hamiltonian.Hamiltonian, support trial.Support, paired bool
 	if !support.Real() {
 		planes = 2
 	}
-	energy := (4 * rotated * rotated / 2) / float64(o.every(measureInterval))
+	energy := (4 * rotated * rotated / 2) / float64(o.every(MeasureInterval))
 	c := Cost{StepFlops: fields + series + half + bias + density + energy, Steps: steps * int64(o.Walkers)}
 	c.Flops = c.StepFlops * float64(c.Steps)
 

@@ -37,8 +37,10 @@ const (
 )
 
 const (
-	measureInterval = 0.05 // imaginary time between energy measurements
-	controlInterval = 0.1  // between re-orthogonalisations and population controls
+	// MeasureInterval is the imaginary time between energy measurements, to the
+	// nearest whole step.
+	MeasureInterval = 0.05
+	controlInterval = 0.1 // between re-orthogonalisations and population controls
 )
 
 func (o Options) withDefaults() Options {
@@ -83,7 +85,7 @@ func (o Options) every(interval float64) int {
 // steps returns the numbers of equilibration and sampling steps, each a whole
 // number of measurements.
 func (o Options) steps() (equilibration, sampling int) {
-	m := o.every(measureInterval)
+	m := o.every(MeasureInterval)
 	round := func(t float64) int { return m * int(math.Ceil(t/o.TimeStep/float64(m)-1e-9)) }
 	return round(o.Equilibration), max(m, round(o.Length))
 }

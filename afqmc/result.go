@@ -123,7 +123,7 @@ func (s *samples) trim() int {
 
 // analyse turns the samples into a result.
 func (w *Walk) analyse(s *samples, status Status) *Result {
-	interval := w.Options.TimeStep * float64(w.Options.every(measureInterval))
+	interval := w.Options.TimeStep * float64(w.Options.every(MeasureInterval))
 	r := &Result{Status: status, TrialEnergy: math.NaN(), TrialSpinSquared: math.NaN()}
 	if e, ok := w.Guide.Expectations(); ok {
 		r.TrialEnergy, r.TrialSpinSquared = e.Energy(w.Guide.Hamiltonian), e.SpinSquared()

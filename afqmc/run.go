@@ -47,7 +47,7 @@ func Run(ctx context.Context, g *trial.Guide, start trial.Orbitals, o Options, r
 // Run continues the walk from its state.
 func (w *Walk) Run(ctx context.Context, rec Recorder) (*Result, error) {
 	o := w.Options
-	measureEvery, controlEvery := o.every(measureInterval), o.every(controlInterval)
+	measureEvery, controlEvery := o.every(MeasureInterval), o.every(controlInterval)
 	equilibration, sampling := o.steps()
 	samples := newSamples(o.Walkers, sampling/measureEvery)
 	status := StatusComplete
@@ -133,7 +133,7 @@ func (w *Walk) measure() (Row, error) {
 	row.Imaginary = imaginary / row.Weight
 	row.Effective = row.Weight * row.Weight / square
 	logNorm := s.logNorm()
-	interval := w.Options.TimeStep * float64(w.Options.every(measureInterval))
+	interval := w.Options.TimeStep * float64(w.Options.every(MeasureInterval))
 	row.Growth = (s.GrowthTime - (logNorm - s.GrowthReference)) / interval
 	s.GrowthReference, s.GrowthTime = logNorm, 0
 	s.ReferenceEnergy += smoothing * (row.Energy - s.ReferenceEnergy)

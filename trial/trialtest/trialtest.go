@@ -32,7 +32,7 @@ func Run(t *testing.T, h *hamiltonian.Hamiltonian, source trial.Source, special 
 	for _, w := range walkers {
 		t.Run("overlap", func(t *testing.T) { testBruteForceOverlap(t, source, w) })
 		t.Run("laws", func(t *testing.T) { testLaws(t, source, w) })
-		t.Run("density", func(t *testing.T) { testDensity(t, h, source, w) })
+		t.Run("density", func(t *testing.T) { testDensity(t, source, w) })
 		t.Run("fields", func(t *testing.T) { testFields(t, h, source, w) })
 		t.Run("energy", func(t *testing.T) { testEnergy(t, h, source, w) })
 		t.Run("batch", func(t *testing.T) { testBatch(t, h, source, w) })
@@ -179,7 +179,7 @@ func testLaws(t *testing.T, source trial.Source, w trial.Walkers) {
 
 // testDensity compares the whole one-body density, obtained by contraction with
 // the support, with the completer's, and its trace with N.
-func testDensity(t *testing.T, h *hamiltonian.Hamiltonian, source trial.Source, w trial.Walkers) {
+func testDensity(t *testing.T, source trial.Source, w trial.Walkers) {
 	fast, ok := source.(trial.DensitySource)
 	if !ok {
 		t.Skip("source gives overlaps only")
@@ -222,7 +222,6 @@ func testDensity(t *testing.T, h *hamiltonian.Hamiltonian, source trial.Source, 
 			atSlow += m * m
 		}
 	}
-	_ = h
 }
 
 // testFields checks d/dε ln O(exp(εL_g)φ) = ⟨v_g⟩ by central differences.
