@@ -139,7 +139,7 @@ func keptSpin(h *hamiltonian.Hamiltonian) *float64 {
 // tighten asks for factors as exact as numbers allow, for energies that are to be
 // compared with others.
 func tighten(j *job.Job) {
-	j.Hamiltonian.FactorTolerance = min(j.Hamiltonian.FactorTolerance, 1e-10)
+	j.Hamiltonian.FactorTolerance = min(j.Hamiltonian.FactorTolerance, comparableTolerance)
 }
 
 func (r *exactResult) print(w io.Writer, title string) error {

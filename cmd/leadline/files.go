@@ -24,6 +24,9 @@ type inputs struct {
 	hashes map[string]string
 }
 
+// newInputs returns inputs whose relative names start from dir.
+func newInputs(dir string) *inputs { return &inputs{dir: dir, hashes: map[string]string{}} }
+
 // openJob reads a job file; an empty name stands for the embedded example.
 func openJob(name string) (*inputs, []byte, string, error) {
 	in := &inputs{hashes: map[string]string{}}

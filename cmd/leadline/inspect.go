@@ -15,10 +15,8 @@ import (
 	"github.com/spf13/cobra"
 
 	"leadline/hamiltonian"
-	"leadline/hamiltonian/fcidump"
 	"leadline/hamiltonian/meanfield"
 	"leadline/hamiltonian/molecule"
-	"leadline/hamiltonian/prepared"
 	"leadline/trial/expansion"
 	"leadline/trial/measured/record"
 )
@@ -102,25 +100,11 @@ func firstBytes(name string) ([]byte, error) {
 	return head[:n], err
 }
 
-// inspectTolerance is the factor tolerance behind the energies that inspect shows.
-const inspectTolerance = 1e-10
-
 // inspectIntegrals reads an integral file and solves its mean fields.
 func inspectIntegrals(ctx context.Context, name string, out io.Writer, shown display) error {
-	in := &inputs{hashes: map[string]string{}}
-	file, size, err := in.open(name)
+	h, residual, err := readIntegrals(ctx, newInputs(""), name, comparableTolerance, shown.stage)
 	if err != nil {
 		return err
-	}
-	defer file.Close()
-	tell := shown.stage("reading "+filepath.Base(name), size)
-	integrals, err := fcidump.ReadWithin(ctx, file, name, readingMemory(), tell)
-	if err != nil {
-		return err
-	}
-	h, residual, err := integrals.Hamiltonian(ctx, inspectTolerance)
-	if err != nil {
-		return fmt.Errorf("%s: %w", name, err)
 	}
 	fmt.Fprintf(out, "%s: integral file\n", name)
 	fmt.Fprintf(out, "  %d orbitals, %d up and %d down electrons, constant energy %s E_h\n", h.Orbitals, h.Up, h.Down, quoted(h.Constant, 0))
@@ -179,14 +163,7 @@ func inspectRecord(name string, out io.Writer) error {
 
 // inspectPrepared reads a prepared Hamiltonian and solves its mean fields.
 func inspectPrepared(ctx context.Context, name string, out io.Writer, shown display) error {
-	in := &inputs{hashes: map[string]string{}}
-	file, size, err := in.open(name)
-	if err != nil {
-		return err
-	}
-	defer file.Close()
-	tell := shown.stage("reading "+filepath.Base(name), size)
-	p, err := prepared.Read(ctx, file, name, func(done, _ int64) { tell(done) })
+	p, err := readPrepared(ctx, newInputs(""), name, shown.stage)
 	if err != nil {
 		return err
 	}

@@ -211,7 +211,7 @@ func (r *jobRun) project(ctx context.Context) (err error) {
 		return err
 	}
 	if m := r.guidance.measured; m != nil {
-		rows.watch = m.watch(int(r.options.Length/afqmc.MeasureInterval))
+		rows.watch = m.watch(int(r.options.Length / afqmc.MeasureInterval))
 	}
 	result, err := afqmc.Run(ctx, r.guidance.guide, r.guidance.start, r.options, rows)
 	if closed := rows.close(); err == nil {

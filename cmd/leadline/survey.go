@@ -68,7 +68,7 @@ func surveyCommand(stderr io.Writer) *cobra.Command {
 }
 
 func runSurvey(ctx context.Context, name string, f runFlags, stdout, stderr io.Writer) error {
-	in := &inputs{dir: filepath.Dir(name), hashes: map[string]string{}}
+	in := newInputs(filepath.Dir(name))
 	text, err := in.read(filepath.Base(name))
 	if err != nil {
 		return err
@@ -165,7 +165,7 @@ func (p *point) run(ctx context.Context, j *job.Job, jobName, dir string, f runF
 	wantExact := f.exact
 	f.exact = false
 	r := &jobRun{
-		in:  &inputs{dir: filepath.Dir(jobName), hashes: map[string]string{}},
+		in:  newInputs(filepath.Dir(jobName)),
 		job: j, flags: f, name: jobName, shown: display{out: stderr, quiet: f.quiet},
 	}
 	if err := r.prepare(ctx); err != nil {

@@ -10,12 +10,10 @@ import (
 	"leadline/cmd/leadline/job"
 	"leadline/hamiltonian"
 	"leadline/hamiltonian/basis"
-	"leadline/hamiltonian/fcidump"
 	"leadline/hamiltonian/hubbard"
 	"leadline/hamiltonian/meanfield"
 	"leadline/hamiltonian/molecule"
 	"leadline/hamiltonian/pairing"
-	"leadline/hamiltonian/prepared"
 	"leadline/trial"
 )
 
@@ -205,28 +203,12 @@ func (s *system) fromPairing(j *job.Job) (err error) {
 }
 
 func (s *system) fromIntegrals(ctx context.Context, j *job.Job, in *inputs, progress progressFunc) error {
-	name := j.Hamiltonian.File
-	file, size, err := in.open(name)
-	if err != nil {
+	var err error
+	if s.hamiltonian, s.residual, err = readIntegrals(ctx, in, j.Hamiltonian.File, j.Hamiltonian.FactorTolerance, progress); err != nil {
 		return fmt.Errorf("hamiltonian.file: %w", err)
 	}
-	defer file.Close()
-	tell := progress("reading "+name, size)
-	integrals, err := fcidump.ReadWithin(ctx, file, in.path(name), readingMemory(), tell)
-	if err != nil {
-		return err
-	}
-	tell(size)
-	s.hamiltonian, s.residual, err = integrals.Hamiltonian(ctx, j.Hamiltonian.FactorTolerance)
-	if err != nil {
-		return fmt.Errorf("%s: %w", in.path(name), err)
-	}
-	if j.Hamiltonian.FrozenCore == job.AutoCore {
-		return fmt.Errorf("hamiltonian.frozen_core: \"auto\" needs the atoms of a molecule; give a number of orbitals")
-	}
-	s.frozen = int(j.Hamiltonian.FrozenCore)
-	if s.frozen == 0 {
-		s.basisFile = name
+	if s.frozen = int(j.Hamiltonian.FrozenCore); s.frozen == 0 {
+		s.basisFile = j.Hamiltonian.File
 	}
 	return nil
 }
@@ -234,15 +216,9 @@ func (s *system) fromIntegrals(ctx context.Context, j *job.Job, in *inputs, prog
 // fromPrepared reads a prepared Hamiltonian, whose reference is the start.
 func (s *system) fromPrepared(ctx context.Context, j *job.Job, in *inputs, progress progressFunc) error {
 	name := j.Hamiltonian.File
-	file, size, err := in.open(name)
+	p, err := readPrepared(ctx, in, name, progress)
 	if err != nil {
 		return fmt.Errorf("hamiltonian.file: %w", err)
-	}
-	defer file.Close()
-	tell := progress("reading "+name, size)
-	p, err := prepared.Read(ctx, file, in.path(name), func(done, _ int64) { tell(done) })
-	if err != nil {
-		return err
 	}
 	s.hamiltonian, s.residual = p.Hamiltonian, p.Provenance.FactorResidual
 	s.constant = p.Hamiltonian.Constant
